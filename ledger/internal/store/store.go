@@ -1,0 +1,221 @@
+// Package store keeps verified entries and derived views of one book in Badger. It is the only importer of Badger, and
+// takes nothing but record.Verified, which only record.Verify and record.Sign can make.
+//
+// # Keys
+//
+//	f                      format number of the store, and the book's id
+//	e <key:32> <seq:8> <id:8>   one entry's bytes as received, in line order (two ids at one seq are a fork)
+//	i <id:32>              where the entry stands: key, seq
+//	v <name>               a derived view; may be thrown away and rebuilt from the entries alone
+//
+// One transaction holds an entry and its index row, so neither is ever found without the other. An entry is reported as
+// signed only after Append returned with sync true: its bytes have then been synced to the disk. Merged batches are written
+// without a sync each and synced once at the end of the batch. After a kill or a power cut Badger replays its own log at
+// the next open; nothing that was synced is lost.
+package store
+
+import (
+	"bytes"
+	"encoding/binary"
+	"errors"
+	"fmt"
+	"os"
+	"strings"
+	"syscall"
+
+	"github.com/dgraph-io/badger/v4"
+	"github.com/dgraph-io/badger/v4/options"
+
+	"example.org/chargehand/ledger/record"
+)
+
+// Errors a caller decides on.
+var (
+	ErrBusy    = errors.New("another process holds this book")
+	ErrDamaged = errors.New("the store is damaged")
+	ErrFull    = errors.New("no space is left on the disk")
+	ErrAbsent  = errors.New("no such entry")
+)
+
+// magic is refused by Badger at open when it differs: the layout of the keys above.
+const magic = 1
+
+// Store is an open store. Its methods may be called from several goroutines.
+type Store struct{ db *badger.DB }
+
+// Open opens the store in dir, and makes it when it is not there. Errors: ErrBusy, ErrDamaged, ErrFull.
+func Open(dir string) (*Store, error) {
+	if err := os.MkdirAll(dir, 0o700); err != nil {
+		return nil, translate(err)
+	}
+	o := badger.DefaultOptions(dir).
+		WithLogger(nil).
+		WithMetricsEnabled(false).
+		WithDetectConflicts(false).
+		WithExternalMagic(magic).
+		// Badger's defaults reserve 2.3 GB of sparse files. These suit a laptop: see DEVELOPERS.md for the figures.
+		WithMemTableSize(8 << 20).
+		WithNumMemtables(2).
+		WithValueLogFileSize(16 << 20).
+		WithValueThreshold(1 << 18). // an entry is at most 16 KiB: all values stay in the tables
+		WithBlockCacheSize(4 << 20).
+		WithIndexCacheSize(0).
+		WithNumCompactors(2).
+		WithNumLevelZeroTables(2).
+		WithNumLevelZeroTablesStall(4).
+		WithCompression(options.Snappy)
+	db, err := badger.Open(o)
+	if err != nil {
+		return nil, translate(err)
+	}
+	return &Store{db}, nil
+}
+
+// Close syncs and closes the store, and gives back the space that Badger reserved ahead for its logs.
+func (s *Store) Close() error { return translate(s.db.Close()) }
+
+// translate is the one place that knows Badger's errors.
+func translate(err error) error {
+	switch {
+	case err == nil:
+		return nil
+	case errors.Is(err, syscall.ENOSPC), strings.Contains(err.Error(), "no space left"):
+		return fmt.Errorf("%w (%v)", ErrFull, err)
+	case strings.Contains(err.Error(), "acquire directory lock"): // Badger exports no value for this
+		return ErrBusy
+	case errors.Is(err, badger.ErrTruncateNeeded), errors.Is(err, badger.ErrEncryptionKeyMismatch),
+		strings.Contains(err.Error(), "checksum"), strings.Contains(err.Error(), "magic"),
+		strings.Contains(err.Error(), "MANIFEST"), strings.Contains(err.Error(), "manifest"):
+		return fmt.Errorf("%w (%v)", ErrDamaged, err)
+	}
+	return err
+}
+
+func entryKey(v record.Verified) []byte {
+	k, id, e := v.Key(), v.ID(), v.Entry()
+	b := make([]byte, 0, 49)
+	b = append(b, 'e')
+	b = append(b, k[:]...)
+	b = binary.BigEndian.AppendUint64(b, e.Seq)
+	return append(b, id[:8]...)
+}
+
+func idKey(id record.ID) []byte { return append([]byte{'i'}, id[:]...) }
+
+// A transaction of Badger takes up to 15 % of the memtable; these stay well inside it.
+const (
+	txnEntries = 1000
+	txnBytes   = 512 << 10
+)
+
+// Append writes the entries. With sync it returns only when they are on the disk. Entries held already are written over
+// with the same bytes.
+func (s *Store) Append(entries []record.Verified, sync bool) error {
+	for len(entries) > 0 {
+		n, size := 0, 0
+		t := s.db.NewTransaction(true)
+		for ; n < len(entries) && n < txnEntries && size < txnBytes; n++ {
+			v := entries[n]
+			k := entryKey(v)
+			raw := v.Raw()
+			size += len(raw)
+			if err := errors.Join(t.Set(k, raw), t.Set(idKey(v.ID()), k)); err != nil {
+				t.Discard()
+				return translate(err)
+			}
+		}
+		if err := t.Commit(); err != nil {
+			return translate(err)
+		}
+		entries = entries[n:]
+	}
+	if sync {
+		return translate(s.db.Sync())
+	}
+	return nil
+}
+
+// Has tells whether the entry is held.
+func (s *Store) Has(id record.ID) (bool, error) {
+	err := s.db.View(func(t *badger.Txn) error {
+		_, err := t.Get(idKey(id))
+		return err
+	})
+	if errors.Is(err, badger.ErrKeyNotFound) {
+		return false, nil
+	}
+	return err == nil, translate(err)
+}
+
+// Raw returns the bytes of one entry, or ErrAbsent.
+func (s *Store) Raw(id record.ID) ([]byte, error) {
+	var out []byte
+	err := s.db.View(func(t *badger.Txn) error {
+		row, err := t.Get(idKey(id))
+		if err != nil {
+			return err
+		}
+		k, err := row.ValueCopy(nil)
+		if err != nil {
+			return err
+		}
+		item, err := t.Get(k)
+		if err != nil {
+			return err
+		}
+		out, err = item.ValueCopy(nil)
+		return err
+	})
+	if errors.Is(err, badger.ErrKeyNotFound) {
+		return nil, ErrAbsent
+	}
+	return out, translate(err)
+}
+
+// Each calls f with the bytes of every entry, line by line and each line by its sequence. The slice is f's only during the
+// call. An error of f ends the walk and is returned.
+func (s *Store) Each(f func(raw []byte) error) error { return s.walk([]byte{'e'}, []byte{'e'}, f) }
+
+// Line calls f with the bytes of the entries of one line from sequence from on.
+func (s *Store) Line(key record.KeyID, from uint64, f func(raw []byte) error) error {
+	prefix := append([]byte{'e'}, key[:]...)
+	return s.walk(prefix, binary.BigEndian.AppendUint64(bytes.Clone(prefix), from), f)
+}
+
+func (s *Store) walk(prefix, start []byte, f func([]byte) error) error {
+	return translate(s.db.View(func(t *badger.Txn) error {
+		it := t.NewIterator(badger.IteratorOptions{Prefix: prefix, PrefetchValues: true, PrefetchSize: 100})
+		defer it.Close()
+		for it.Seek(start); it.Valid(); it.Next() {
+			if err := it.Item().Value(f); err != nil {
+				return err
+			}
+		}
+		return nil
+	}))
+}
+
+// View returns a derived view's bytes, nil when there is none.
+func (s *Store) View(name string) ([]byte, error) {
+	var out []byte
+	err := s.db.View(func(t *badger.Txn) error {
+		item, err := t.Get([]byte("v" + name))
+		if err != nil {
+			return err
+		}
+		out, err = item.ValueCopy(nil)
+		return err
+	})
+	if errors.Is(err, badger.ErrKeyNotFound) {
+		return nil, nil
+	}
+	return out, translate(err)
+}
+
+// SetView replaces a derived view.
+func (s *Store) SetView(name string, data []byte) error {
+	return translate(s.db.Update(func(t *badger.Txn) error { return t.Set([]byte("v"+name), data) }))
+}
+
+// DropViews throws all derived views away. Entries are not touched.
+func (s *Store) DropViews() error { return translate(s.db.DropPrefix([]byte("v"))) }

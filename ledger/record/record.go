@@ -1,0 +1,314 @@
+// Package record is the bytes of one entry: a COSE_Sign1 message (RFC 9052) over deterministic CBOR (RFC 8949, section
+// 4.2.1), signed with Ed25519 (RFC 8032). Anybody's COSE library can verify one; entry.cddl describes it.
+//
+//	18([ << {1: -8, 3: "application/chargehand+cbor", 4: h'<public key>'} >>,   protected header
+//	     {},                                                                    unprotected header, always empty
+//	     << payload >>,
+//	     h'<64 bytes>' ])                                                       signature
+//
+// What is signed is the Sig_structure ["Signature1", protected, external_aad, payload], where external_aad is the book's
+// id: an entry of one book cannot pass in another. The founding entry is signed with an empty external_aad, and its id is
+// the book's id. An entry's id is SHA-256 of the Sig_structure. The payload is a map:
+//
+//	1  sequence number in the line of this key, from 1
+//	2  id of the line's entry before it; absent for the first
+//	3  ids of the heads of other lines that were seen and not known to this line before, sorted
+//	4  [seconds since 1970, zone offset in minutes] of the signature
+//	5  [milliseconds, count] of the hybrid logical clock
+//	6  kind
+//	7  body, a map with small integer keys
+//	8  what the signer was shown: [verdict, corrected pressure, core version]; absent where there was none
+//
+// There are no floats: an amount is [mantissa, exponent, unit] as the person typed it. Bytes are kept as they came and must
+// be what this package would have written.
+package record
+
+import (
+	"bytes"
+	"crypto/ed25519"
+	"crypto/sha256"
+	"errors"
+	"fmt"
+	"slices"
+
+	"filippo.io/edwards25519"
+	"github.com/fxamacker/cbor/v2"
+)
+
+// MaxSize is the largest entry in bytes, on write and on receipt.
+const MaxSize = 16 << 10
+
+// Reasons to refuse bytes.
+var (
+	ErrTooLarge     = errors.New("the entry is larger than 16 KiB")
+	ErrMalformed    = errors.New("the entry is malformed")
+	ErrNotCanonical = errors.New("the entry is not in its one deterministic encoding")
+	ErrSignature    = errors.New("the signature does not fit the entry and this book")
+	ErrWrongBook    = errors.New("the entry founds another book")
+	ErrWeakKey      = errors.New("the key is not a full-strength Ed25519 public key")
+)
+
+// Entry is one signed statement. Body is one of the body structs, by value.
+type Entry struct {
+	Seq    uint64
+	Prev   ID // zero at Seq 1
+	Seen   []ID
+	Signed Time
+	Clock  HLC
+	Kind   Kind
+	Body   any
+	Shown  *Shown
+}
+
+// Shown is what the signer was shown before signing.
+type Shown struct {
+	_         struct{} `cbor:",toarray"`
+	Verdict   string
+	Corrected *Amount // nil where none could be computed
+	Core      string
+}
+
+// Verified is an entry whose bytes and signature were found right. Only Verify, VerifyFounding and Sign make one.
+type Verified struct {
+	raw   []byte
+	id    ID
+	key   KeyID
+	entry Entry
+}
+
+// ID returns the entry's id.
+func (v Verified) ID() ID { return v.id }
+
+// Raw returns the entry's bytes, which must not be changed.
+func (v Verified) Raw() []byte { return v.raw }
+
+// Entry returns what the entry states; its slices must not be changed.
+func (v Verified) Entry() Entry { return v.entry }
+
+// Key returns the key that signed.
+func (v Verified) Key() KeyID { return v.key }
+
+const (
+	algEdDSA    = -8
+	contentType = "application/chargehand+cbor"
+)
+
+type header struct {
+	Alg  int64  `cbor:"1,keyasint"`
+	Type string `cbor:"3,keyasint"`
+	Kid  KeyID  `cbor:"4,keyasint"`
+}
+
+type message struct {
+	_           struct{} `cbor:",toarray"`
+	Protected   []byte
+	Unprotected struct{}
+	Payload     []byte
+	Signature   [ed25519.SignatureSize]byte
+}
+
+type sigStructure struct {
+	_         struct{} `cbor:",toarray"`
+	Context   string
+	Protected []byte
+	External  []byte
+	Payload   []byte
+}
+
+type payload struct {
+	Seq    uint64          `cbor:"1,keyasint"`
+	Prev   ID              `cbor:"2,keyasint,omitzero"`
+	Seen   []ID            `cbor:"3,keyasint"`
+	Signed Time            `cbor:"4,keyasint"`
+	Clock  HLC             `cbor:"5,keyasint"`
+	Kind   Kind            `cbor:"6,keyasint"`
+	Body   cbor.RawMessage `cbor:"7,keyasint"`
+	Shown  *Shown          `cbor:"8,keyasint,omitempty"`
+}
+
+var (
+	encoding = must(cbor.EncOptions{Sort: cbor.SortCoreDeterministic, ShortestFloat: cbor.ShortestFloatNone, IndefLength: cbor.IndefLengthForbidden, NilContainers: cbor.NilContainerAsEmpty}.EncMode())
+	decoding = must(cbor.DecOptions{DupMapKey: cbor.DupMapKeyEnforcedAPF, IndefLength: cbor.IndefLengthForbidden, ExtraReturnErrors: cbor.ExtraDecErrorUnknownField, MaxNestedLevels: 8, MaxArrayElements: 1024, MaxMapPairs: 64, TagsMd: cbor.TagsForbidden, UTF8: cbor.UTF8RejectInvalid}.DecMode())
+)
+
+const coseSign1 = 0xd2 // tag 18
+
+func must[T any](v T, err error) T {
+	if err != nil {
+		panic(err) // a fault in the constant options above
+	}
+	return v
+}
+
+// strict decodes and requires that encoding the result gives the same bytes: options alone let long integers and unsorted
+// keys through.
+func strict(data []byte, into any) error {
+	if err := decoding.Unmarshal(data, into); err != nil {
+		return fmt.Errorf("%w: %w", ErrMalformed, err)
+	}
+	again, err := encoding.Marshal(into)
+	if err != nil {
+		return fmt.Errorf("%w: %w", ErrMalformed, err)
+	}
+	if !bytes.Equal(again, data) {
+		return ErrNotCanonical
+	}
+	return nil
+}
+
+func toBeSigned(protected, external, body []byte) ([]byte, error) {
+	return encoding.Marshal(sigStructure{Context: "Signature1", Protected: protected, External: external, Payload: body})
+}
+
+func external(book BookID, kind Kind) []byte {
+	if kind == KindFounding {
+		return nil
+	}
+	return book[:]
+}
+
+// Sign makes an entry. For a founding entry the book's id is not used. The error is ErrMalformed with what is wrong in the
+// entry, or ErrTooLarge.
+func Sign(key ed25519.PrivateKey, book BookID, e Entry) (Verified, error) {
+	body, err := EncodeBody(e.Kind, e.Body)
+	if err != nil {
+		return Verified{}, err
+	}
+	data, err := encoding.Marshal(payload{e.Seq, e.Prev, e.Seen, e.Signed, e.Clock, e.Kind, body, e.Shown})
+	if err != nil {
+		return Verified{}, fmt.Errorf("%w: %w", ErrMalformed, err)
+	}
+	kid := KeyID(key.Public().(ed25519.PublicKey))
+	protected, err := encoding.Marshal(header{algEdDSA, contentType, kid})
+	if err != nil {
+		return Verified{}, err
+	}
+	tbs, err := toBeSigned(protected, external(book, e.Kind), data)
+	if err != nil {
+		return Verified{}, err
+	}
+	m := message{Protected: protected, Payload: data, Signature: [64]byte(ed25519.Sign(key, tbs))}
+	raw, err := encoding.Marshal(m)
+	if err != nil {
+		return Verified{}, err
+	}
+	raw = append([]byte{coseSign1}, raw...)
+	if e.Kind == KindFounding {
+		return VerifyFounding(raw)
+	}
+	return Verify(raw, book)
+}
+
+// Verify checks an entry's bytes, form and signature for a book: a pure function of the two. Whether the signer had any
+// authority is not its question. Verify keeps raw, which must not be changed afterwards.
+func Verify(raw []byte, book BookID) (Verified, error) {
+	v, err := verify(raw, book)
+	if err == nil && v.entry.Kind == KindFounding && BookID(v.id) != book {
+		return Verified{}, ErrWrongBook
+	}
+	return v, err
+}
+
+// VerifyFounding checks the founding entry of a book that is not known yet; its ID is the book's.
+func VerifyFounding(raw []byte) (Verified, error) {
+	v, err := verify(raw, BookID{})
+	if err == nil && v.entry.Kind != KindFounding {
+		return Verified{}, fmt.Errorf("%w: a %s founds no book", ErrMalformed, v.entry.Kind)
+	}
+	return v, err
+}
+
+func verify(raw []byte, book BookID) (Verified, error) {
+	if len(raw) > MaxSize {
+		return Verified{}, ErrTooLarge
+	}
+	if len(raw) == 0 || raw[0] != coseSign1 {
+		return Verified{}, fmt.Errorf("%w: it is not a COSE_Sign1 message", ErrMalformed)
+	}
+	var m message
+	if err := strict(raw[1:], &m); err != nil {
+		return Verified{}, err
+	}
+	var h header
+	if err := strict(m.Protected, &h); err != nil {
+		return Verified{}, fmt.Errorf("protected header: %w", err)
+	}
+	if h.Alg != algEdDSA || h.Type != contentType {
+		return Verified{}, fmt.Errorf("%w: algorithm %d and type %q; only EdDSA (-8) and %q are taken", ErrMalformed, h.Alg, h.Type, contentType)
+	}
+	var p payload
+	if err := strict(m.Payload, &p); err != nil {
+		return Verified{}, fmt.Errorf("payload: %w", err)
+	}
+	e := Entry{Seq: p.Seq, Prev: p.Prev, Seen: p.Seen, Signed: p.Signed, Clock: p.Clock, Kind: p.Kind, Shown: p.Shown}
+	if err := e.check(); err != nil {
+		return Verified{}, err
+	}
+	var err error
+	if e.Body, err = DecodeBody(p.Kind, p.Body); err != nil {
+		return Verified{}, fmt.Errorf("%s: %w", p.Kind, err)
+	}
+	if err := CheckKey(h.Kid); err != nil {
+		return Verified{}, err
+	}
+	tbs, err := toBeSigned(m.Protected, external(book, p.Kind), m.Payload)
+	if err != nil {
+		return Verified{}, err
+	}
+	if !ed25519.Verify(h.Kid[:], tbs, m.Signature[:]) {
+		return Verified{}, ErrSignature
+	}
+	return Verified{raw: raw, id: sha256.Sum256(tbs), key: h.Kid, entry: e}, nil
+}
+
+// CheckKey refuses what is not the canonical encoding of a point outside the small subgroup: with such a key one signature
+// can fit many entries, or one entry pass on one laptop and fail on another.
+func CheckKey(k KeyID) error {
+	p, err := new(edwards25519.Point).SetBytes(k[:])
+	if err != nil || !bytes.Equal(p.Bytes(), k[:]) || new(edwards25519.Point).MultByCofactor(p).Equal(edwards25519.NewIdentityPoint()) == 1 {
+		return ErrWeakKey
+	}
+	return nil
+}
+
+const (
+	maxText   = 2000
+	maxSeen   = 1000
+	maxOffset = 14 * 60
+)
+
+func (e *Entry) check() error {
+	bad := func(format string, args ...any) error {
+		return fmt.Errorf("%w: "+format, append([]any{ErrMalformed}, args...)...)
+	}
+	switch {
+	case e.Seq == 0 || (e.Seq == 1) != (e.Prev == ID{}):
+		return bad("number %d of a line with %s before it", e.Seq, e.Prev.Short())
+	case (e.Kind == KindFounding) && (e.Seq != 1 || len(e.Seen) > 0):
+		return bad("a founding entry that has something before it")
+	case len(e.Seen) > maxSeen:
+		return bad("it names %d heads", len(e.Seen))
+	case e.Clock.Wall < 0:
+		return bad("its clock shows %d", e.Clock.Wall)
+	}
+	if err := e.Signed.check(); err != nil {
+		return err
+	}
+	for i := 1; i < len(e.Seen); i++ {
+		if compareID(e.Seen[i-1], e.Seen[i]) >= 0 {
+			return bad("the heads that it has seen are not sorted")
+		}
+	}
+	if e.Seq > 1 && slices.Contains(e.Seen, e.Prev) {
+		return bad("it names the entry before it twice")
+	}
+	if e.Shown != nil {
+		if err := errors.Join(checkText("verdict shown", e.Shown.Verdict, true), checkText("core version", e.Shown.Core, true)); err != nil {
+			return err
+		}
+		if e.Shown.Corrected != nil {
+			return e.Shown.Corrected.check("corrected pressure shown")
+		}
+	}
+	return checkText("kind", string(e.Kind), true)
+}
