@@ -3,6 +3,7 @@ module example.org/chargehand
 go 1.26.8
 
 require (
+	filippo.io/age v1.3.2
 	filippo.io/edwards25519 v1.2.0
 	github.com/dgraph-io/badger/v4 v4.9.6
 	github.com/fxamacker/cbor/v2 v2.10.0
@@ -15,10 +16,12 @@ require (
 	github.com/spf13/pflag v1.1.0
 	github.com/veraison/go-cose v1.3.0
 	golang.org/x/sync v0.25.0
+	golang.org/x/term v0.48.0
 	pgregory.net/rapid v1.3.0
 )
 
 require (
+	filippo.io/hpke v0.4.0 // indirect
 	github.com/beorn7/perks v1.0.1 // indirect
 	github.com/cespare/xxhash/v2 v2.3.0 // indirect
 	github.com/davidlazar/go-crypto v0.0.0-20200604182044-b73af7476f6c // indirect

@@ -73,6 +73,16 @@ func newRoot() *cobra.Command {
 	}
 	root.SetFlagErrorFunc(flagError)
 	root.AddCommand(
+		newBook(),
+		newHand(),
+		newSheet(),
+		newUnit(),
+		newGauge(),
+		newCheck(),
+		newCountersign(),
+		newWithdraw(),
+		newBoard(),
+		newAudit(),
 		newConvert(),
 		newProve(),
 		newVersion(),
