@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"io"
 
+	"example.org/chargehand/calc"
 	"example.org/chargehand/calc/gas"
 	"example.org/chargehand/calc/quantity"
 
@@ -54,10 +55,14 @@ func convert(m *gas.Model, reading quantity.GaugePressure, at, to quantity.Tempe
 	if err != nil {
 		return conversion{}, err
 	}
+	corrected, err := calc.Correct(m, p, at, to)
+	if err != nil {
+		return conversion{}, err
+	}
 	c := conversion{
 		Gas: m.Name(), AtK: float64(at), ToK: float64(to), DensityKgM3: float64(rho), Z: before.Z, ZAtTo: after.Z,
 		UncertaintyK: m.RelativeUncertainty(at, p),
-		corrected:    after.P.Gauge(ambient), ideal: ideal(reading, at, to, ambient),
+		corrected:    corrected.Gauge(ambient), ideal: ideal(reading, at, to, ambient),
 	}
 	psi := func(g quantity.GaugePressure) float64 {
 		v, psiErr := g.InUnit("psi")
@@ -71,7 +76,7 @@ func convert(m *gas.Model, reading quantity.GaugePressure, at, to quantity.Tempe
 
 // ideal is the ideal gas's answer at fixed volume: absolute pressure goes with absolute temperature.
 func ideal(reading quantity.GaugePressure, at, to quantity.Temperature, ambient quantity.Pressure) quantity.GaugePressure {
-	return (reading.Abs(ambient) * quantity.Pressure(to/at)).Gauge(ambient)
+	return calc.IdealCorrect(reading.Abs(ambient), at, to).Gauge(ambient)
 }
 
 func newConvert() *cobra.Command {
