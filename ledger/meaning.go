@@ -237,6 +237,17 @@ func Done(body any) (record.Time, bool) {
 	return record.Time{}, false
 }
 
+// GaugeOf returns the asset number of the gauge of a reading or charge, "" for other bodies.
+func GaugeOf(body any) string {
+	switch b := body.(type) {
+	case record.Reading:
+		return b.Gauge
+	case record.Charge:
+		return b.Gauge
+	}
+	return ""
+}
+
 // amend applies corrections, withdrawals and countersigns in display order.
 func (m *Meaning) amend() {
 	for i := range m.Entries {

@@ -74,7 +74,7 @@ func Run(m *ledger.Meaning, unreadable []Unreadable, want *record.BookID) Report
 		if !ok || j.Sheet == nil {
 			continue
 		}
-		if asset := gaugeOf(it.Body); asset != "" {
+		if asset := ledger.GaugeOf(it.Body); asset != "" {
 			if g, done := m.Gauge(asset), doneOf(it.Body); g != nil && (done.Unix < g.Calibrated.Unix || done.Unix > g.Due.Unix) {
 				add(Rule, it.ID(), "gauge %s was out of calibration when it was read", asset)
 			}
@@ -119,16 +119,6 @@ func entry(m *ledger.Meaning, it *ledger.Item, add func(Severity, record.ID, str
 	for _, c := range it.Fallen {
 		add(Rule, id, "countersign %s was given for what a correction has changed since", c.Short())
 	}
-}
-
-func gaugeOf(body any) string {
-	switch b := body.(type) {
-	case record.Reading:
-		return b.Gauge
-	case record.Charge:
-		return b.Gauge
-	}
-	return ""
 }
 
 func doneOf(body any) record.Time {

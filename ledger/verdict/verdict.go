@@ -148,7 +148,7 @@ func Limits(s record.Sheet) (calc.Limits, error) {
 	return l, p.err
 }
 
-// Gauge returns a gauge of the book as the core takes it, with its calibration judged at a time.
+// gaugeOf returns a gauge of the book as the core takes it, with its calibration judged at a time.
 func gaugeOf(g record.Gauge, at record.Time) (calc.Gauge, error) {
 	var p parser
 	acc, err := calc.ParseAccuracy(g.Accuracy)
@@ -171,12 +171,6 @@ func gaugeOf(g record.Gauge, at record.Time) (calc.Gauge, error) {
 
 func day(t record.Time) string {
 	return time.Unix(t.Unix, 0).In(time.FixedZone("", t.OffsetMin*60)).Format(time.DateOnly)
-}
-
-// Unit is where the book stands on one unit: the newest work in force, judged.
-type Unit struct {
-	*ledger.Unit
-	Last *Judged // nil when nothing has been recorded
 }
 
 // All judges every reading and charge of the book, on all cores. The map is by entry.
@@ -258,7 +252,7 @@ func unseen(m *ledger.Meaning, it *ledger.Item, j Judged) record.ID {
 	if j.Sheet != nil && !m.Saw(it.ID(), j.Sheet.ID) {
 		return j.Sheet.ID
 	}
-	if g := m.Gauge(gaugeName(it.Body)); g != nil && !m.Saw(it.ID(), g.ID) {
+	if g := m.Gauge(ledger.GaugeOf(it.Body)); g != nil && !m.Saw(it.ID(), g.ID) {
 		return g.ID
 	}
 	return record.ID{}
@@ -271,22 +265,12 @@ func cause(before, after *ledger.Meaning, id record.ID, w, n Judged) record.ID {
 	if n.Sheet != nil && (w.Sheet == nil || w.Sheet.ID != n.Sheet.ID) {
 		return n.Sheet.ID
 	}
-	if g := after.Gauge(gaugeName(after.Item(id).Body)); g != nil {
+	if g := after.Gauge(ledger.GaugeOf(after.Item(id).Body)); g != nil {
 		if o := before.Gauge(g.Asset); o == nil || o.ID != g.ID {
 			return g.ID
 		}
 	}
 	return record.ID{}
-}
-
-func gaugeName(body any) string {
-	switch b := body.(type) {
-	case record.Reading:
-		return b.Gauge
-	case record.Charge:
-		return b.Gauge
-	}
-	return ""
 }
 
 // parser keeps the first error of several conversions, so that a body can be converted field by field.
