@@ -115,7 +115,10 @@ func (g *Model) Pressure(t quantity.Temperature, rho Density) (quantity.Pressure
 	var iso isotherm
 	g.fix(&iso, float64(t))
 	p, _ := iso.pressure(float64(rho) / g.m)
-	return quantity.Pressure(p), checkPressure(quantity.Pressure(p))
+	if err := checkPressure(quantity.Pressure(p)); err != nil {
+		return 0, err
+	}
+	return quantity.Pressure(p), nil
 }
 
 // Density returns the density at a temperature and absolute pressure. Valid for 200 K to 420 K and 0.05 MPa to 70 MPa;

@@ -1,8 +1,8 @@
 package gas
 
 // The reference equation for nitrogen: R. Span, E.W. Lemmon, R.T Jacobsen, W. Wagner, A. Yokozeki, J. Phys. Chem. Ref. Data
-// 29(6), 1361-1433 (2000), in the order of its tables. Stated uncertainty of density: 0.02 % below 30 MPa (240 K to 523 K);
-// no single number is stated for 30 MPa to 70 MPa, where the tool takes 0.1 % (common practice, no source).
+// 29(6), 1361-1433 (2000), in the order of its tables. Stated uncertainty of density: 0.02 % up to 12 MPa, and up to
+// 30 MPa from 240 K to 523 K; no single number is stated beyond, where the tool takes 0.1 % (common practice, no source).
 var nitrogen = Model{
 	name: "nitrogen",
 	r:    8.31451, m: 28.01348e-3, tRed: 126.192, rhoRed: 11.1839e3,
@@ -58,7 +58,7 @@ var nitrogen = Model{
 		{2627.67566274, 3, 2, 25, 275, 1.25, 1},
 	},
 	uncertainty: func(t, p float64) float64 {
-		if p <= 30e6 {
+		if p <= 12e6 || p <= 30e6 && t >= 240 {
 			return 0.0002
 		}
 		return 0.001

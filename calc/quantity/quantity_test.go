@@ -6,22 +6,46 @@ import (
 	"testing"
 )
 
-// Source: NIST SP 811 (2008) appendix B.8, factors to seven digits; the exact ones from the definitions of the pound, the inch
-// and standard gravity.
+// Source: NIST SP 811 (2008) appendix B.8, factors to seven digits; the exact ones from the definitions of the pound, the inch,
+// the gallon and standard gravity.
 func TestFactors(t *testing.T) {
+	gauge := func(s string) (float64, error) { v, err := ParseGauge(s); return float64(v), err }
+	volume := func(s string) (float64, error) { v, err := ParseVolume(s); return float64(v), err }
+	elevation := func(s string) (float64, error) { v, err := ParseElevation(s); return float64(v), err }
 	for _, c := range []struct {
-		in   string
-		want float64
-		rel  float64
+		in    string
+		parse func(string) (float64, error)
+		want  float64
+		rel   float64
 	}{
-		{"1psi", 6894.757293168361, 1e-15},
-		{"1bar", 1e5, 0},
-		{"1kgf/cm2", 98066.5, 0},
-		{"1inHg", 3386.389, 2e-7},
+		{"1psi", gauge, 6894.757, 1e-7},
+		{"1psi", gauge, 6894.757293168361, 1e-15},
+		{"1bar", gauge, 1e5, 0},
+		{"1kPa", gauge, 1e3, 0},
+		{"1MPa", gauge, 1e6, 0},
+		{"1hPa", gauge, 100, 0},
+		{"1kgf/cm2", gauge, 98066.5, 0},
+		{"1inHg", gauge, 3386.389, 2e-7},
+		{"1in3", volume, 16.387064e-6, 1e-15},
+		{"1cm3", volume, 1e-6, 0},
+		{"1mL", volume, 1e-6, 0},
+		{"1L", volume, 1e-3, 0},
+		{"1USgal", volume, 3.785412e-3, 1e-7},
+		{"1ft", elevation, 0.3048, 0},
+		{"1m", elevation, 1, 0},
 	} {
-		g, err := ParseGauge(c.in)
-		if err != nil || math.Abs(float64(g)/c.want-1) > c.rel {
-			t.Errorf("%s = %v Pa, %v; want %v", c.in, g, err, c.want)
+		v, err := c.parse(c.in)
+		if err != nil || math.Abs(v/c.want-1) > c.rel {
+			t.Errorf("%s = %v, %v; want %v", c.in, v, err, c.want)
+		}
+	}
+	for in, want := range map[string]float64{"9F": 5, "5C": 5, "5K": 5, "-9F": -5} {
+		w, err := Parse(in)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if d, err := w.TemperatureDifference(); err != nil || math.Abs(float64(d)-want) > 1e-15*math.Abs(want) {
+			t.Errorf("a difference of %s = %v K, %v; want %v", in, d, err, want)
 		}
 	}
 	for in, want := range map[string]float64{"32F": 273.15, "70F": 294.26111111111111, "-40C": 233.15, "-40F": 233.15, "300K": 300} {
@@ -29,14 +53,15 @@ func TestFactors(t *testing.T) {
 			t.Errorf("%s = %v K, %v; want %v", in, got, err, want)
 		}
 	}
-	if v, err := ParseVolume("1in3"); err != nil || math.Abs(float64(v)/16.387064e-6-1) > 1e-15 {
-		t.Errorf("1in3 = %v, %v", v, err)
-	}
 }
 
 // Source: U.S. Standard Atmosphere, 1976, pressures by altitude in feet (hPa, two decimals) and its layer base at 11,000 m.
 func TestStandardAtmosphere(t *testing.T) {
-	for ft, hPa := range map[float64]float64{0: 1013.25, 1000: 977.17, 2000: 942.13, 4000: 875.11, 6000: 812.00, 8000: 752.62, 10000: 696.82, 15000: 571.82, 11000 / 0.3048: 226.32} {
+	for ft, hPa := range map[float64]float64{
+		0: 1013.25, 1000: 977.17, 2000: 942.13, 3000: 908.12, 4000: 875.11, 5000: 843.07, 6000: 812.00, 7000: 781.85,
+		8000: 752.62, 9000: 724.29, 10000: 696.82, 11000: 670.20, 12000: 644.41, 13000: 619.43, 14000: 595.24, 15000: 571.82,
+		11000 / 0.3048: 226.32,
+	} {
 		p, err := StandardAtmosphereAt(Elevation(ft * 0.3048))
 		if err != nil || math.Abs(float64(p)/100-hPa) > 0.006 {
 			t.Errorf("%v ft: %v Pa, %v; want %v hPa", ft, p, err, hPa)
@@ -59,7 +84,7 @@ func TestParseKeepsWhatWasTyped(t *testing.T) {
 			t.Errorf("Parse(%q) = %+v, %v; want %+v", in, got, err, want)
 		}
 	}
-	for _, in := range []string{"", "psi", "abc", "1180psix", "1.psi", "1,18psi", "1180,5psi", "1e3psi", "--5C", "NaNpsi", "Infpsi", "1 1psi", "99999999999999999psi", "5mPa", "1.1.1psi"} {
+	for _, in := range []string{"", "psi", "abc", "1180psix", "1.psi", "1,18psi", "1180,5psi", "1e3psi", "--5C", "-+5C", "+-5C", "NaNpsi", "Infpsi", "1 1psi", "99999999999999999psi", "5mPa", "1.1.1psi"} {
 		if got, err := Parse(in); err == nil {
 			t.Errorf("Parse(%q) = %+v, want an error", in, got)
 		}
@@ -77,6 +102,50 @@ func TestKindsDoNotMix(t *testing.T) {
 	} {
 		if err := parse(in); err == nil {
 			t.Errorf("%q was taken", in)
+		}
+	}
+}
+
+// A value shown in a unit and read again is the same value, whatever the unit.
+func TestInUnitUndoesTheFactor(t *testing.T) {
+	for _, u := range units {
+		w := Written{1234, -1, u.name}
+		var back float64
+		var err error
+		switch u.kind {
+		case pressure:
+			g, _ := w.Gauge()
+			p, _ := w.Absolute()
+			if back, err = g.InUnit(u.name); err == nil {
+				var other float64
+				if other, err = p.InUnit(u.name); other != back {
+					t.Errorf("%s: gauge %v, absolute %v", w, back, other)
+				}
+			}
+		case temperature:
+			k, _ := w.Temperature()
+			back, err = k.InUnit(u.name)
+		default:
+			continue
+		}
+		if err != nil || math.Abs(back-123.4) > 1e-12*123.4 {
+			t.Errorf("%s is %v %s, %v", w, back, u.name, err)
+		}
+	}
+	if v, err := GaugePressure(1e6).InUnit("F"); err == nil {
+		t.Errorf("a pressure in F is %v", v)
+	}
+}
+
+// A value that nobody typed still prints as itself and gives an error or a finite number.
+func TestMadeUpExponents(t *testing.T) {
+	for _, e := range []int{math.MinInt, -1 << 40, -400, -19, 19, 400, math.MaxInt} {
+		w := Written{7, e, "psi"}
+		if len(w.String()) > 40 {
+			t.Errorf("exponent %d is written with %d characters", e, len(w.String()))
+		}
+		if g, err := w.Gauge(); math.IsNaN(float64(g)) || math.IsInf(float64(g), 0) {
+			t.Errorf("%s = %v, %v", w, g, err)
 		}
 	}
 }

@@ -92,7 +92,10 @@ func Parse(s string) (Written, error) {
 	}
 	number, name := t[:end], strings.TrimSpace(t[end:])
 	negative := strings.HasPrefix(number, "-")
-	digits := strings.TrimPrefix(strings.TrimPrefix(number, "-"), "+")
+	digits := strings.TrimPrefix(number, "-")
+	if !negative {
+		digits = strings.TrimPrefix(number, "+")
+	}
 	whole, fraction, point := strings.Cut(digits, ".")
 	if whole == "" || point && fraction == "" {
 		return fail("is not a number with a unit")
@@ -129,16 +132,19 @@ func Parse(s string) (Written, error) {
 	return fail(fmt.Sprintf("has a unit %q that is not known", name))
 }
 
-// String writes the value as it was typed, with a space before the unit.
+// String writes the value as it was typed, with a space before the unit. An exponent that no typed value has is written as one,
+// so that a made-up value can neither fill the memory with zeros nor look like another.
 func (w Written) String() string {
 	digits := strconv.FormatUint(magnitude(w.Mantissa), 10)
-	if n := -w.Exponent; n > 0 {
+	if w.Exponent < -18 || w.Exponent > 18 {
+		digits += "e" + strconv.Itoa(w.Exponent)
+	} else if n := -w.Exponent; n > 0 {
 		if len(digits) <= n {
 			digits = strings.Repeat("0", n-len(digits)+1) + digits
 		}
 		digits = digits[:len(digits)-n] + "." + digits[len(digits)-n:]
 	} else if w.Exponent > 0 && w.Mantissa != 0 {
-		digits += strings.Repeat("0", min(w.Exponent, 18))
+		digits += strings.Repeat("0", w.Exponent)
 	}
 	if w.Mantissa < 0 {
 		digits = "-" + digits
