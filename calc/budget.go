@@ -3,6 +3,7 @@ package calc
 import (
 	"fmt"
 	"math"
+	"strconv"
 	"time"
 
 	"example.org/chargehand/calc/gas"
@@ -15,6 +16,8 @@ type Term struct {
 	Stated string                 // the figure it comes from
 	U      quantity.GaugePressure // standard uncertainty of the corrected pressure, pascals
 }
+
+const gasTemperature = "gas temperature"
 
 // gaugeReference is the temperature at which a gauge meets its class: 20 degC (EN 837-1).
 const gaugeReference quantity.Temperature = 293.15
@@ -38,73 +41,66 @@ func soakLeft(soak time.Duration) float64 {
 	return soakStart * math.Exp(-float64(soak)/float64(soakConstant))
 }
 
-// budget returns the terms for a charge of density rho read as reading, brought to the reference temperature: each input's
-// standard uncertainty times the derivative of the corrected pressure by that input.
-func budget(l Limits, g Gauge, r Reading, reading quantity.GaugePressure, rho gas.Density) ([]Term, error) {
-	at, err := l.Gas.State(r.Temperature, rho)
-	if err != nil {
-		return nil, err
-	}
-	ref := at
-	if l.Chart == nil {
-		if ref, err = l.Gas.State(l.Reference, rho); err != nil {
-			return nil, err
-		}
-	}
+// budget returns the terms for a charge read as reading, at the state at, brought to the state ref (the same state with a
+// chart, which holds at any temperature): each input's standard uncertainty times the derivative of the corrected pressure
+// by that input. The first three are the gauge's. The gauge is taken to be as warm as the gas.
+func budget(l Limits, g Gauge, r Reading, reading quantity.GaugePressure, at, ref gas.State) []Term {
 	// p_ref = p(T_ref, rho(T, p)): by p (dp/drho)_ref/(dp/drho), by T -(dp/drho)_ref (dp/dT)/(dp/drho).
-	byP := ref.DpDRho / at.DpDRho
-	byT := byP * at.DpDT
-	rect := func(half float64) quantity.GaugePressure { return quantity.GaugePressure(half / math.Sqrt(3)) }
+	byP := quantity.GaugePressure(ref.DpDRho / at.DpDRho)
+	// With a chart the limits move with temperature instead, about as the isochore does: byP is 1 and the slope remains.
+	byT := byP * quantity.GaugePressure(at.DpDT)
 
-	var ts []Term
-	if len(g.Correction) > 0 {
-		ts = append(ts, Term{"gauge, by its certificate", "U = " + psi(g.CorrectionUncertainty) + " (k = 2)", g.CorrectionUncertainty / 2 * quantity.GaugePressure(byP)})
-	} else {
-		half := g.Accuracy.Limit(reading, g.Span)
-		ts = append(ts, Term{"gauge, by its class", fmt.Sprintf("%s of %s: +/-%s", g.Accuracy, psi(g.Span), psi(half)), rect(float64(half) * byP)})
+	u := g.uncertainty(reading, r.Temperature)
+	class := Term{"gauge, by its class", fmt.Sprintf("%s of %s: +/-%s", g.Accuracy, psi(g.Span-g.SpanLow), psi(g.Accuracy.Limit(reading-g.SpanLow, g.Span-g.SpanLow))), u[0] * byP}
+	if g.certified() {
+		class = Term{"gauge, by its certificate", "U = " + psi(g.CorrectionUncertainty) + " (k = 2)", u[0] * byP}
 	}
-	ts = append(ts, Term{"reading the dial", "half of a division of " + psi(g.Graduation), rect(float64(g.Graduation) / 2 * byP)})
+	ts := append(make([]Term, 0, 6), class,
+		Term{"reading the dial", "half of a division of " + psi(g.Graduation), u[1] * byP},
+		Term{"gauge away from 20 C", fmt.Sprintf("%.3g %% of span a kelvin, %.0f K", 100*g.warmth(), math.Abs(float64(r.Temperature-gaugeReference))), u[2] * byP})
 
-	k := g.TempCoefficient
-	if k == 0 {
-		k = 0.0004
-	}
-	away := math.Abs(float64(r.Temperature - gaugeReference))
-	ts = append(ts, Term{"gauge away from 20 C", fmt.Sprintf("%.3g %% of span a kelvin, %.0f K", 100*k, away), rect(k * away * float64(g.Span) * byP)})
-
-	half := probeHalfWidth
-	stated := "shell probe, +/-1 K"
+	half, stated := probeHalfWidth, "shell probe, +/-1 K"
 	if r.TemperatureFrom == AmbientAfterSoak {
 		half = ambientHalfWidth + soakLeft(r.Soak)
 		stated = fmt.Sprintf("air after %.0f min, +/-%.1f K", r.Soak.Minutes(), half)
 	}
-	if l.Chart != nil {
-		// The chart's own limits move with temperature, about as the isochore does.
-		byT = at.DpDT
-	}
-	ts = append(ts, Term{"gas temperature", stated, rect(half * byT)})
+	ts = append(ts, Term{gasTemperature, stated, rectangular(quantity.GaugePressure(half) * byT)})
 
-	ambient, stated := 100.0, "measured, +/-1 hPa"
+	ambient, stated := quantity.GaugePressure(100), "measured, +/-1 hPa"
 	if !r.AmbientKnown {
-		ambient, stated = 5000, "not entered: standard sea level, +/-50 hPa"
+		ambient, stated = 5000, "not measured, +/-50 hPa"
 	}
-	ts = append(ts, Term{"ambient pressure", stated, rect(ambient * math.Abs(byP))})
+	ts = append(ts, Term{"ambient pressure", stated, rectangular(ambient * byP)})
 
 	if l.Chart == nil {
 		rel := l.Gas.RelativeUncertainty(r.Temperature, at.P) / 2 // stated with k = 2
-		// Only the change between the two temperatures rests on the equation; the density's error is common to both in part.
-		ts = append(ts, Term{"equation of state", fmt.Sprintf("%.2g %% in density (k = 2), at both temperatures", 200*rel), quantity.GaugePressure(rel * math.Sqrt2 * float64(rho) * ref.DpDRho)})
+		// The density is found at one temperature and used at the other; the two errors are taken as independent.
+		ts = append(ts, Term{"equation of state", fmt.Sprintf("%.2g %% in density (k = 2), at both temperatures", 200*rel), quantity.GaugePressure(rel * math.Sqrt2 * float64(at.Rho) * ref.DpDRho)})
 	}
-	return ts, nil
+	return ts
 }
 
-// combined returns the root of the sum of squares.
-func combined(ts []Term) quantity.GaugePressure {
+// rectangular is the standard uncertainty of an error equally likely anywhere up to half either way (JCGM 100, 4.3.7).
+func rectangular(half quantity.GaugePressure) quantity.GaugePressure {
+	return half / quantity.GaugePressure(math.Sqrt(3))
+}
+
+// root returns the root of the sum of squares.
+func root(us ...quantity.GaugePressure) quantity.GaugePressure {
 	s := 0.0
-	for _, t := range ts {
-		s += float64(t.U) * float64(t.U)
+	for _, u := range us {
+		s += float64(u) * float64(u)
 	}
 	return quantity.GaugePressure(math.Sqrt(s))
+}
+
+// combined returns the combined standard uncertainty of independent terms.
+func combined(ts []Term) quantity.GaugePressure {
+	s := quantity.GaugePressure(0)
+	for _, t := range ts {
+		s = root(s, t.U)
+	}
+	return s
 }
 
 // phi is the standard normal distribution function.
@@ -115,15 +111,24 @@ func phi(z float64) float64 { return 0.5 * math.Erfc(-z/math.Sqrt2) }
 // Source: JCGM 106:2012, section 7 (formula re-derived).
 func conformance(y, low, high, u float64) float64 { return phi((high-y)/u) - phi((low-y)/u) }
 
+// onePsi keeps the factor in the one table of units.
+var onePsi, _ = quantity.Written{Mantissa: 1, Unit: "psi"}.Gauge()
+
 func psi(g quantity.GaugePressure) string {
-	v, _ := g.InUnit("psi")
-	if math.Abs(v) < 20 && v != math.Trunc(v) {
-		return fmt.Sprintf("%.1f psi", v)
+	v, err := g.InUnit("psi")
+	switch {
+	case err != nil || math.IsNaN(v) || math.IsInf(v, 0):
+		return "no pressure"
+	case math.Abs(v) < 20 && math.Abs(v-math.Round(v)) > 0.05:
+		return strconv.FormatFloat(v, 'f', 1, 64) + " psi"
 	}
-	return fmt.Sprintf("%.0f psi", v)
+	return strconv.FormatFloat(math.Round(v)+0, 'f', 0, 64) + " psi"
 }
 
-func kelvin(t quantity.Temperature) string {
-	f, _ := t.InUnit("F")
-	return fmt.Sprintf("%.0f F", f)
+func fahrenheit(t quantity.Temperature) string {
+	f, err := t.InUnit("F")
+	if err != nil || math.IsNaN(f) || math.IsInf(f, 0) {
+		return "no temperature"
+	}
+	return strconv.FormatFloat(math.Round(f)+0, 'f', 0, 64) + " F"
 }

@@ -35,13 +35,13 @@ func NewChart(rows []ChartRow) (*Chart, error) {
 	})
 	for i, r := range rs {
 		if !(r.Low > 0 && r.Low <= r.Charge && r.Charge <= r.High && !math.IsInf(float64(r.High), 0)) {
-			return nil, fmt.Errorf("the chart row at %s has low %s, charge %s, high %s: they must rise", kelvin(r.Temperature), psi(r.Low), psi(r.Charge), psi(r.High))
+			return nil, fmt.Errorf("the chart row at %s has low %s, charge %s, high %s: they must rise", fahrenheit(r.Temperature), psi(r.Low), psi(r.Charge), psi(r.High))
 		}
 		if i > 0 && !(r.Temperature > rs[i-1].Temperature) {
-			return nil, fmt.Errorf("the chart has two rows at %s", kelvin(r.Temperature))
+			return nil, fmt.Errorf("the chart has two rows at %s", fahrenheit(r.Temperature))
 		}
 		if i > 0 && (r.Low < rs[i-1].Low || r.Charge < rs[i-1].Charge || r.High < rs[i-1].High) {
-			return nil, fmt.Errorf("the chart falls from %s to %s; pressure rises with temperature", kelvin(rs[i-1].Temperature), kelvin(r.Temperature))
+			return nil, fmt.Errorf("the chart falls from %s to %s; pressure rises with temperature", fahrenheit(rs[i-1].Temperature), fahrenheit(r.Temperature))
 		}
 	}
 	return &Chart{rs}, nil
@@ -49,6 +49,9 @@ func NewChart(rows []ChartRow) (*Chart, error) {
 
 // At returns the limits at a gas temperature, or a *quantity.RangeError outside the chart.
 func (c *Chart) At(t quantity.Temperature) (low, charge, high quantity.GaugePressure, err error) {
+	if len(c.rows) == 0 {
+		return 0, 0, 0, errors.New("the chart has no rows")
+	}
 	first, last := c.rows[0], c.rows[len(c.rows)-1]
 	if !(t >= first.Temperature && t <= last.Temperature) {
 		return 0, 0, 0, &quantity.RangeError{Quantity: "gas temperature for the chart", Value: float64(t), Low: float64(first.Temperature), High: float64(last.Temperature), Unit: "K"}

@@ -1,6 +1,7 @@
 package calc
 
 import (
+	"cmp"
 	"fmt"
 	"math"
 	"slices"
@@ -26,21 +27,45 @@ var asmeGrades = []Accuracy{
 // Classes of EN 837-1:1996, table of accuracy classes.
 var enClasses = []string{"0.1", "0.25", "0.6", "1", "1.6", "2.5", "4"}
 
-// ParseAccuracy reads "ASME 2A", "EN 1.6" or a stated figure such as "0.5%" of span.
-func ParseAccuracy(s string) (Accuracy, error) {
-	t := strings.Join(strings.Fields(s), " ")
+// ASMEGrade returns a grade of ASME B40.100: 4A, 3A, 2A, 1A, A, B, C or D.
+func ASMEGrade(grade string) (Accuracy, error) {
 	for _, a := range asmeGrades {
-		if strings.EqualFold(a.name, t) {
+		if strings.EqualFold(a.name, "ASME "+grade) {
 			return a, nil
 		}
 	}
-	if class, ok := strings.CutPrefix(strings.ToUpper(t), "EN "); ok && slices.Contains(enClasses, class) {
-		v, _ := strconv.ParseFloat(class, 64)
-		return Accuracy{"EN " + class, v, v, v}, nil
+	return Accuracy{}, fmt.Errorf("grade %q is not in ASME B40.100; write one of 4A, 3A, 2A, 1A, A, B, C, D", grade)
+}
+
+// ENClass returns a class of EN 837-1: 0.1, 0.25, 0.6, 1, 1.6, 2.5 or 4.
+func ENClass(class string) (Accuracy, error) {
+	if !slices.Contains(enClasses, class) {
+		return Accuracy{}, fmt.Errorf("class %q is not in EN 837-1; write one of %s", class, strings.Join(enClasses, ", "))
+	}
+	v, err := strconv.ParseFloat(class, 64)
+	return Accuracy{"EN " + class, v, v, v}, err
+}
+
+// StatedPercent returns an accuracy stated in percent of span, above 0 and up to 10.
+func StatedPercent(percent float64) (Accuracy, error) {
+	if !(percent > 0 && percent <= 10) {
+		return Accuracy{}, fmt.Errorf("an accuracy of %v%% of span is not between 0 and 10%%; write what the dial or certificate states", percent)
+	}
+	return Accuracy{strconv.FormatFloat(percent, 'g', -1, 64) + "%", percent, percent, percent}, nil
+}
+
+// ParseAccuracy reads "ASME 2A", "EN 1.6" or a stated figure such as "0.5%" of span.
+func ParseAccuracy(s string) (Accuracy, error) {
+	t := strings.ToUpper(strings.Join(strings.Fields(s), " "))
+	if grade, ok := strings.CutPrefix(t, "ASME "); ok {
+		return ASMEGrade(grade)
+	}
+	if class, ok := strings.CutPrefix(t, "EN "); ok {
+		return ENClass(class)
 	}
 	if n, ok := strings.CutSuffix(t, "%"); ok {
-		if v, err := strconv.ParseFloat(strings.TrimSpace(n), 64); err == nil && v > 0 && v <= 10 {
-			return Accuracy{strings.TrimSpace(n) + "%", v, v, v}, nil
+		if v, err := strconv.ParseFloat(strings.TrimSpace(n), 64); err == nil {
+			return StatedPercent(v)
 		}
 	}
 	return Accuracy{}, fmt.Errorf("accuracy %q is not known; write ASME 4A to D, EN %s, or a figure such as 0.5%% of span up to 10%%", s, strings.Join(enClasses, ", "))
@@ -48,7 +73,8 @@ func ParseAccuracy(s string) (Accuracy, error) {
 
 func (a Accuracy) String() string { return a.name }
 
-// Limit returns the largest error allowed at a reading, gauge pascals, either way.
+// Limit returns the largest error allowed at a reading, gauge pascals, either way. Reading and span count from the lower end
+// of the scale.
 func (a Accuracy) Limit(reading, span quantity.GaugePressure) quantity.GaugePressure {
 	pct := a.mid
 	switch {
@@ -63,9 +89,10 @@ func (a Accuracy) Limit(reading, span quantity.GaugePressure) quantity.GaugePres
 // CorrectionPoint is a row of a calibration certificate: what to add to a reading.
 type CorrectionPoint struct{ Reading, Correction quantity.GaugePressure }
 
-// Gauge is a pressure gauge from zero to Span.
+// Gauge is a pressure gauge that reads from SpanLow, normally zero, to Span.
 type Gauge struct {
 	Name       string
+	SpanLow    quantity.GaugePressure
 	Span       quantity.GaugePressure
 	Accuracy   Accuracy
 	Graduation quantity.GaugePressure // one division of the dial
@@ -73,7 +100,7 @@ type Gauge struct {
 	// Bourdon gauges as quoted by secondary sources.
 	TempCoefficient       float64
 	Correction            []CorrectionPoint
-	CorrectionUncertainty quantity.GaugePressure // expanded, k = 2; used in place of the class when there is a table
+	CorrectionUncertainty quantity.GaugePressure // expanded, k = 2; used in place of the class when it and the table are given
 	InCalibration         bool
 	CalibrationNote       string // the dates, for the reason when it is not
 }
@@ -84,9 +111,7 @@ func (g Gauge) corrected(reading quantity.GaugePressure) quantity.GaugePressure 
 		return reading
 	}
 	rows := slices.Clone(g.Correction)
-	slices.SortFunc(rows, func(a, b CorrectionPoint) int {
-		return int(math.Copysign(1, float64(a.Reading-b.Reading)))
-	})
+	slices.SortFunc(rows, func(a, b CorrectionPoint) int { return cmp.Compare(a.Reading, b.Reading) })
 	if reading <= rows[0].Reading {
 		return reading + rows[0].Correction
 	}
@@ -96,4 +121,64 @@ func (g Gauge) corrected(reading quantity.GaugePressure) quantity.GaugePressure 
 		}
 	}
 	return reading + rows[len(rows)-1].Correction
+}
+
+// certified says whether a certificate replaces the gauge's class. A table without its uncertainty does not.
+func (g Gauge) certified() bool { return len(g.Correction) > 0 && g.CorrectionUncertainty > 0 }
+
+// warmth returns the temperature coefficient as a fraction of span per kelvin.
+func (g Gauge) warmth() float64 {
+	if g.TempCoefficient == 0 {
+		return 0.0004
+	}
+	return g.TempCoefficient
+}
+
+// uncertainty returns the standard uncertainties of a reading of the dial: by class or certificate, of reading the dial, and
+// of the gauge's own temperature.
+func (g Gauge) uncertainty(reading quantity.GaugePressure, at quantity.Temperature) [3]quantity.GaugePressure {
+	span := g.Span - g.SpanLow
+	u := [3]quantity.GaugePressure{
+		rectangular(g.Accuracy.Limit(reading-g.SpanLow, span)),
+		rectangular(g.Graduation / 2),
+		rectangular(span * quantity.GaugePressure(g.warmth()*math.Abs(float64(at-gaugeReference)))),
+	}
+	if g.certified() {
+		u[0] = g.CorrectionUncertainty / 2
+	}
+	return u
+}
+
+// Gauges to choose from when the one at hand will not do, coarse to fine: grade, and divisions in the span. Ranges in psi.
+// (Common practice, no source.)
+var (
+	choiceGrades = []struct {
+		grade     string
+		divisions quantity.GaugePressure
+	}{{"B", 100}, {"A", 100}, {"2A", 200}, {"3A", 400}, {"4A", 1000}}
+	choiceSpans = []quantity.GaugePressure{100, 200, 300, 600, 1000, 1500, 2000, 3000, 5000, 10000}
+)
+
+// betterGauge names the coarsest gauge with which a reading's dial adds so little that the standard uncertainty on the dial
+// stays below most, given what the other inputs contribute; nil when no gauge would do. The span is the smallest that has
+// the reading in its lower three quarters, where a dial is read (UFC 4-390-01).
+func betterGauge(reading quantity.GaugePressure, at quantity.Temperature, others, most quantity.GaugePressure) *Gauge {
+	for _, span := range choiceSpans {
+		if span *= onePsi; reading > span*3/4 {
+			continue
+		}
+		for _, c := range choiceGrades {
+			accuracy, err := ASMEGrade(c.grade)
+			if err != nil {
+				continue
+			}
+			g := Gauge{Span: span, Accuracy: accuracy, Graduation: span / c.divisions}
+			u := g.uncertainty(reading, at)
+			if root(others, u[0], u[1], u[2]) <= most {
+				return &g
+			}
+		}
+		return nil
+	}
+	return nil
 }

@@ -1,8 +1,10 @@
 package calc
 
 import (
+	"cmp"
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 	"time"
 
@@ -25,7 +27,12 @@ const (
 
 var classWords = [...]string{"not assessable", "not measurable with this gauge", "pass", "conditional pass", "conditional fail", "fail"}
 
-func (c Class) String() string { return classWords[c] }
+func (c Class) String() string {
+	if c < 0 || int(c) >= len(classWords) {
+		return fmt.Sprintf("Class(%d)", int(c))
+	}
+	return classWords[c]
+}
 
 // ParseClass reads a class's words.
 func ParseClass(s string) (Class, error) {
@@ -78,14 +85,14 @@ type Limits struct {
 }
 
 // Rule is how a value near a limit is decided (ILAC-G8:09/2019, JCGM 106): by a guard band of so many standard
-// uncertainties.
+// uncertainties. The zero Rule is GuardBanded.
 type Rule struct {
 	name string
 	z    float64
 }
 
 // GuardBanded takes a guard band of w = U, k = 2: at most 2.3 % of values accepted at the limit are outside it.
-func GuardBanded() Rule { return Rule{"guard band w = U (k = 2)", 2} }
+func GuardBanded() Rule { return Rule{} }
 
 // SimpleAcceptance takes no guard band: up to 50 % of values accepted at the limit are outside it.
 func SimpleAcceptance() Rule { return Rule{"simple acceptance", 0} }
@@ -98,7 +105,20 @@ func MaxFalseAccept(p float64) (Rule, error) {
 	return Rule{fmt.Sprintf("false-accept risk at most %.3g", p), math.Sqrt2 * math.Erfinv(1-2*p)}, nil
 }
 
-func (r Rule) String() string { return r.name }
+func (r Rule) String() string {
+	if r == (Rule{}) {
+		return "guard band w = U (k = 2)"
+	}
+	return r.name
+}
+
+// guard returns the guard band in standard uncertainties.
+func (r Rule) guard() quantity.GaugePressure {
+	if r == (Rule{}) {
+		return 2
+	}
+	return quantity.GaugePressure(r.z)
+}
 
 // Verdict is what a reading says against the limits. Pressures are gauge pascals, at the sheet's reference temperature and
 // ambient pressure; with a chart, at the reading's own temperature.
@@ -114,148 +134,273 @@ type Verdict struct {
 	Sentence          string // for somebody who was not there
 }
 
-// relieved is the fluid pressure up to which a dial counts as showing none (common practice, no source).
-const relievedBelow quantity.GaugePressure = 50 * 6894.757293168361
+// Fluid pressure up to which a dial counts as showing none, and how near system pressure a reading is suspect, as a part of
+// system pressure; a charge that is itself that high is not (all common practice, no source).
+var relievedBelow = 50 * onePsi
+
+const (
+	nearSystem = 0.03
+	highCharge = 0.9
+)
 
 // Judge decides. It never fails: what stands in the way is a reason of a verdict of not assessable, all reasons at once.
 //
+// Before a reading is taken, judging the target itself tells whether the gauge at hand can decide at all.
+//
 // Source: uncertainty by JCGM 100, decision by ILAC-G8:09/2019 sections 4.2.1 and 4.2.2 and JCGM 106.
 func Judge(l Limits, g Gauge, r Reading, rule Rule) Verdict {
-	v := Verdict{Reasons: obstacles(l, g, r)}
-	if len(v.Reasons) > 0 {
-		return v.notAssessable()
-	}
 	reading := g.corrected(r.Gauge)
-	rho, err := l.Gas.Density(r.Temperature, reading.Abs(r.Ambient))
-	if err == nil {
-		err = v.compare(l, r, reading)
+	v, why := compare(l, r, reading)
+	why = append(obstacles(l, g, r, v.Target), why...)
+	if len(why) > 0 {
+		return notAssessable(why)
 	}
-	if err == nil {
-		v.Budget, err = budget(l, g, r, reading, rho)
-	}
-	if err != nil {
-		v.Reasons = append(v.Reasons, err.Error())
-		return v.notAssessable()
-	}
+	v.Budget = budget(l, g, r, reading, v.at, v.ref)
 	u := combined(v.Budget)
 	v.U = step(2 * u)
 	v.Conformance = conformance(float64(v.Corrected), float64(v.Low), float64(v.High), float64(u))
-	v.decide(step(quantity.GaugePressure(rule.z) * u))
-	v.advise(l, g)
-	return v
+	w := step(rule.guard() * u)
+	v.Class = decide(v.inside(), v.High-v.Low, w)
+	v.Next = v.next(l, g, r, rule, reading)
+	v.Sentence = v.sentence(l, g, r, w)
+	return v.Verdict
 }
 
-// obstacles returns everything that forbids a comparison.
-func obstacles(l Limits, g Gauge, r Reading) []string {
-	var why []string
-	add := func(format string, args ...any) { why = append(why, fmt.Sprintf(format, args...)) }
+// comparison is a verdict in the making, with the state of the gas as read and as the limits take it.
+type comparison struct {
+	Verdict
+	at, ref gas.State
+}
+
+// inside is how far the charge lies within the nearer limit; negative outside.
+func (v *comparison) inside() quantity.GaugePressure {
+	return min(v.Corrected-v.Low, v.High-v.Corrected)
+}
+
+// obstacle is why no comparison is possible, and what removes it.
+type obstacle struct{ why, remedy string }
+
+const putSheetRight = "have the sheet put right"
+
+// compare finds the corrected pressure and the limits that it stands against.
+func compare(l Limits, r Reading, reading quantity.GaugePressure) (comparison, []obstacle) {
+	var v comparison
+	var why []obstacle
+	known := r.TemperatureFrom != TemperatureUnknown
+	switch {
+	case l.Chart == nil:
+		v.Low, v.Target, v.High = step(l.Charge-l.Minus), step(l.Charge), step(l.Charge+l.Plus)
+		if !(l.Minus >= 0 && l.Plus >= 0 && v.Low >= 0 && v.Target > 0 && plausible(v.High)) {
+			why = append(why, obstacle{"the sheet has neither a chart nor a charge with its tolerance", putSheetRight})
+		}
+	case known:
+		low, charge, high, err := l.Chart.At(r.Temperature)
+		v.Low, v.Target, v.High = step(low), step(charge), step(high)
+		if err != nil {
+			why = append(why, obstacle{"outside the chart: " + err.Error(), "let the unit come to a temperature on the chart"})
+		}
+	}
+	if l.Gas == nil {
+		return v, append(why, obstacle{"the sheet names no gas", putSheetRight})
+	}
+	if !known || !(r.Gauge > 0) || !(l.Ambient > 0) {
+		return v, why // obstacles says so
+	}
+	rho, err := l.Gas.Density(r.Temperature, reading.Abs(r.Ambient))
+	if err == nil {
+		v.at, err = l.Gas.State(r.Temperature, rho)
+		v.ref = v.at
+	}
+	if err == nil && l.Chart == nil {
+		v.ref, err = l.Gas.State(l.Reference, rho)
+	}
+	if err != nil {
+		return v, append(why, obstacle{err.Error(), "see that pressure, temperature and units are what was meant"})
+	}
+	// With a chart only the gauge's zero moves, with ambient pressure.
+	v.Corrected = step(v.ref.P.Gauge(l.Ambient))
+	if l.Chart != nil {
+		v.Corrected = step(reading.Abs(r.Ambient).Gauge(l.Ambient))
+	}
+	return v, why
+}
+
+// obstacles returns everything else that forbids a comparison, in the order in which a person would deal with it.
+func obstacles(l Limits, g Gauge, r Reading, target quantity.GaugePressure) []obstacle {
+	var why []obstacle
+	add := func(remedy, format string, args ...any) {
+		why = append(why, obstacle{fmt.Sprintf(format, args...), remedy})
+	}
+	const relieve = "relieve the fluid side, working every circuit of this unit"
 	switch {
 	case strings.TrimSpace(r.Relieved.How) == "" || !r.Relieved.Seen:
-		add("it is not said how the fluid side was relieved and what pressure was seen there")
-	case r.Relieved.FluidPressure > relievedBelow:
-		add("hydraulic pressure was not relieved: %s on the fluid side", psi(r.Relieved.FluidPressure))
+		add("relieve the fluid side and note how, and the pressure seen there", "it is not said how the fluid side was relieved and what pressure was seen there")
+	case !(r.Relieved.FluidPressure <= relievedBelow):
+		add(relieve, "hydraulic pressure was not relieved: %s on the fluid side", psi(r.Relieved.FluidPressure))
 	}
-	if l.SystemPressure > 0 && l.Charge < l.SystemPressure*9/10 && math.Abs(float64(r.Gauge-l.SystemPressure)) < 0.03*float64(l.SystemPressure) {
-		add("the reading of %s agrees with system pressure %s: the gauge is then reading the fluid", psi(r.Gauge), psi(l.SystemPressure))
+	if s := l.SystemPressure; s > 0 && target < s*highCharge && math.Abs(float64(r.Gauge-s)) < nearSystem*float64(s) {
+		add(relieve, "the reading of %s agrees with system pressure %s: the gauge is then reading the fluid", psi(r.Gauge), psi(s))
 	}
-	switch {
-	case !g.InCalibration:
-		add("gauge %s is out of calibration (%s)", g.Name, g.CalibrationNote)
-	case !(g.Span > 0 && g.Graduation > 0):
-		add("gauge %s has no span or graduation", g.Name)
+	if !g.InCalibration {
+		note := ""
+		if g.CalibrationNote != "" {
+			note = " (" + g.CalibrationNote + ")"
+		}
+		add("use a gauge that is in calibration", "gauge %s is out of calibration%s", g.Name, note)
 	}
-	if !(r.Gauge > 0 && r.Gauge <= g.Span) {
-		add("the reading of %s is outside the gauge's span of 0 to %s", psi(r.Gauge), psi(g.Span))
+	if !(g.Span > g.SpanLow && plausible(g.Span-g.SpanLow) && g.Graduation > 0 && g.Graduation <= g.Span-g.SpanLow && g.warmth() > 0 && g.warmth() < 1) {
+		add("register the gauge with its span and division", "gauge %s has no usable span, division or temperature coefficient", g.Name)
+	}
+	if g.Accuracy == (Accuracy{}) && !g.certified() {
+		add("register the gauge with its accuracy", "gauge %s has neither an accuracy class nor a certificate with its uncertainty", g.Name)
+	}
+	if !plausible(g.CorrectionUncertainty) || slices.ContainsFunc(g.Correction, func(c CorrectionPoint) bool { return !plausible(c.Reading) || !plausible(c.Correction) }) {
+		add("register the gauge's certificate again", "the certificate of gauge %s has a figure that is no number", g.Name)
+	}
+	if !(r.Gauge > 0 && r.Gauge >= g.SpanLow && r.Gauge <= g.Span) {
+		add("use a gauge whose span holds the pressure", "the reading of %s is outside the gauge's span of %s to %s", psi(r.Gauge), psi(g.SpanLow), psi(g.Span))
+	}
+	if !(r.Ambient >= 20_000 && r.Ambient <= 115_000 && l.Ambient >= 20_000 && l.Ambient <= 115_000) {
+		add("enter the station pressure, not reduced to sea level", "the ambient pressure of %.0f hPa, or the sheet's of %.0f hPa, is none on Earth", r.Ambient/100, l.Ambient/100)
 	}
 	switch r.TemperatureFrom {
-	case TemperatureUnknown:
-		add("the gas temperature is not known")
+	case ShellProbe:
 	case AmbientAfterSoak:
 		if r.Soak < MinimumSoak {
-			add("the unit soaked %.0f min; below %.0f min the air says nothing of the gas", r.Soak.Minutes(), MinimumSoak.Minutes())
+			add(fmt.Sprintf("repeat after another %.0f min of soak, or use a shell probe", math.Ceil((MinimumSoak-max(r.Soak, 0)).Minutes())),
+				"the unit soaked %.0f min; below %.0f min the air says nothing of the gas", r.Soak.Minutes(), MinimumSoak.Minutes())
 		}
+	default:
+		add("take the gas temperature: a probe on the shell, or the air after a soak", "the gas temperature is not known")
 	}
 	if l.Rated > 0 && r.Gauge > l.Rated {
-		add("the charging valve is rated %s, below the reading of %s", psi(l.Rated), psi(r.Gauge))
+		add("bleed below the valve's rating and follow the manual on a valve that was over-pressed", "the charging valve is rated %s, below the reading of %s", psi(l.Rated), psi(r.Gauge))
 	}
-	if l.TempLow > 0 && r.Temperature < l.TempLow || l.TempHigh > 0 && r.Temperature > l.TempHigh {
-		add("the gas temperature of %s is outside the sheet's range of %s to %s", kelvin(r.Temperature), kelvin(l.TempLow), kelvin(l.TempHigh))
+	if l.TempLow > 0 && r.Temperature < l.TempLow {
+		add("let the unit warm into the sheet's range", "the gas temperature of %s is below the sheet's least, %s", fahrenheit(r.Temperature), fahrenheit(l.TempLow))
 	}
-	if l.Chart != nil {
-		if _, _, _, err := l.Chart.At(r.Temperature); err != nil {
-			add("the gas temperature of %s is outside the chart, which runs from %s to %s", kelvin(r.Temperature), kelvin(l.Chart.rows[0].Temperature), kelvin(l.Chart.rows[len(l.Chart.rows)-1].Temperature))
-		}
+	if l.TempHigh > 0 && r.Temperature > l.TempHigh {
+		add("let the unit cool into the sheet's range", "the gas temperature of %s is above the sheet's highest, %s", fahrenheit(r.Temperature), fahrenheit(l.TempHigh))
 	}
 	return why
 }
 
-// compare sets the corrected pressure and the limits that it stands against.
-func (v *Verdict) compare(l Limits, r Reading, reading quantity.GaugePressure) error {
-	if l.Chart != nil {
-		low, charge, high, err := l.Chart.At(r.Temperature)
-		// The same gas under another ambient pressure: only the gauge's zero moves.
-		v.Corrected = step(reading.Abs(r.Ambient).Gauge(l.Ambient))
-		v.Low, v.Target, v.High = step(low), step(charge), step(high)
-		return err
+// plausible says whether a figure can be a pressure on a gauge or sheet at all: up to 1 GPa, above any gas gauge. It keeps what
+// is no number, and what would overflow, out of the arithmetic.
+func plausible(g quantity.GaugePressure) bool { return math.Abs(float64(g)) <= 1e9 }
+
+func notAssessable(why []obstacle) Verdict {
+	v := Verdict{Class: NotAssessable}
+	var remedies []string
+	for _, o := range why {
+		v.Reasons = append(v.Reasons, o.why)
+		if !slices.Contains(remedies, o.remedy) {
+			remedies = append(remedies, o.remedy)
+		}
 	}
-	p, err := Correct(l.Gas, reading.Abs(r.Ambient), r.Temperature, l.Reference)
-	v.Corrected = step(p.Gauge(l.Ambient))
-	v.Low, v.Target, v.High = step(l.Charge-l.Minus), step(l.Charge), step(l.Charge+l.Plus)
-	return err
+	v.Next = strings.Join(remedies, "; ") + "; then read again: no conclusion may be drawn from this reading"
+	v.Sentence = "Not assessable: " + strings.Join(v.Reasons, "; ") + "."
+	return v
 }
 
-// decide sets the class with a guard band w inside and outside of each limit.
-func (v *Verdict) decide(w quantity.GaugePressure) {
-	inside := min(v.Corrected-v.Low, v.High-v.Corrected) // negative outside
+// decide returns the class of a charge that lies so far inside its nearer limit, with a guard band w either side of it. All
+// three are whole pascals.
+func decide(inside, width, w quantity.GaugePressure) Class {
 	switch {
 	case inside < -w:
-		v.Class = Fail // certain whatever the tolerance's width
-	case v.High-v.Low < 2*w:
-		v.Class = NotMeasurable
+		return Fail // certain whatever the tolerance's width
+	case width < 2*w:
+		return NotMeasurable
 	case inside >= w:
-		v.Class = Pass
+		return Pass
 	case inside >= 0:
-		v.Class = ConditionalPass
-	default:
-		v.Class = ConditionalFail
+		return ConditionalPass
 	}
+	return ConditionalFail
 }
 
-func (v *Verdict) notAssessable() Verdict {
-	v.Class = NotAssessable
-	v.Next = "put right what is named and read again; no conclusion may be drawn from this reading"
-	v.Sentence = "Not assessable: " + strings.Join(v.Reasons, "; ") + "."
-	return *v
-}
-
-func (v *Verdict) advise(l Limits, g Gauge) {
-	short := v.Target - v.Corrected
-	amount := fmt.Sprintf("charge by about %s", psi(short))
-	if short < 0 {
-		amount = fmt.Sprintf("bleed by about %s", psi(-short))
-	}
-	if l.Chart == nil {
-		amount += fmt.Sprintf(" (at %s)", kelvin(l.Reference))
-	}
-	better := fmt.Sprintf("use a better gauge: one with U of at most %s at this reading", psi((v.High-v.Low)/2))
+// next says what to do in the trade's words.
+func (v *comparison) next(l Limits, g Gauge, r Reading, rule Rule, reading quantity.GaugePressure) string {
 	switch v.Class {
 	case Pass:
-		v.Next = "nothing; the charge is in limits"
+		return "nothing; the charge is in limits"
 	case ConditionalPass:
-		v.Next = "read again with a better gauge, or " + amount + " to bring it clear of the limit, as the manual allows"
+		return v.trim(l, g, r) + ", to bring it clear of the limit, as the manual allows; " + v.better(r, rule, reading, v.inside())
 	case ConditionalFail:
-		v.Next = amount + ", or read again with a better gauge before deciding"
-	case Fail:
-		v.Next = amount + "; then look for the cause, and remove from service if the manual says so"
+		return v.trim(l, g, r) + "; " + v.better(r, rule, reading, -v.inside())
 	case NotMeasurable:
-		v.Next = better
+		room := min(v.Target-v.Low, v.High-v.Target) // what passes a charge on target
+		if room == 0 {
+			room = (v.High - v.Low) / 2
+		}
+		return v.better(r, rule, reading, room)
 	}
-	where := fmt.Sprintf("corrected to %s the charge is %s", kelvin(l.Reference), psi(v.Corrected))
+	return v.trim(l, g, r) + "; then look for the cause, and remove from service if the manual says so"
+}
+
+// trim says by how much to charge or bleed to the target, as this gauge would show it here and now, once settled.
+func (v *comparison) trim(l Limits, g Gauge, r Reading) string {
+	target, what := v.Target.Abs(l.Ambient), fmt.Sprintf("on gauge %s at %s", g.Name, fahrenheit(r.Temperature))
+	var err error
+	if l.Chart == nil {
+		target, err = Correct(l.Gas, target, l.Reference, r.Temperature)
+	}
+	if err != nil {
+		return "bring it to a temperature at which the target can be set: " + err.Error()
+	}
+	dial := target.Gauge(r.Ambient)
+	dial -= g.corrected(dial) - dial // what the dial shows there; corrections change slowly along it
+	switch {
+	case l.Rated > 0 && dial > l.Rated:
+		return fmt.Sprintf("do not charge: the valve is rated %s, below the %s needed at %s", psi(l.Rated), psi(dial), fahrenheit(r.Temperature))
+	case dial > g.Span:
+		return fmt.Sprintf("charge with another gauge: %s is needed at %s and gauge %s ends at %s", psi(dial), fahrenheit(r.Temperature), g.Name, psi(g.Span))
+	case dial < r.Gauge:
+		return fmt.Sprintf("bleed by about %s, to %s %s once settled", psi(r.Gauge-dial), psi(dial), what)
+	}
+	return fmt.Sprintf("charge by about %s, to %s %s once settled", psi(dial-r.Gauge), psi(dial), what)
+}
+
+// better names a gauge whose guard band would leave the room free, or says what stands in the way of any.
+func (v *comparison) better(r Reading, rule Rule, reading, room quantity.GaugePressure) string {
+	byP := quantity.GaugePressure(v.ref.DpDRho / v.at.DpDRho)
+	others := v.Budget[3:] // all but the gauge's own
+	if b := betterGauge(reading, r.Temperature, combined(others)/byP, room/rule.guard()/byP); b != nil {
+		return fmt.Sprintf("to decide, read again with a better gauge: %s, 0 to %s, divisions of %s or finer", b.Accuracy, psi(b.Span), psi(b.Graduation))
+	}
+	worst := slices.MaxFunc(others, func(a, b Term) int { return cmp.Compare(a.U, b.U) })
+	soak := ""
+	if worst.Name == gasTemperature && r.TemperatureFrom == AmbientAfterSoak {
+		soak = "; repeat after a longer soak or with a shell probe"
+	}
+	return fmt.Sprintf("no better gauge alone would decide: %s leaves +/-%s%s", worst.Name, psi(rule.guard()*worst.U), soak)
+}
+
+var temperatureWords = map[TemperatureSource]string{ShellProbe: "by a probe on the shell", AmbientAfterSoak: "by the air after a soak"}
+
+// sentence explains the verdict with its numbers to somebody who was not there.
+func (v *comparison) sentence(l Limits, g Gauge, r Reading, w quantity.GaugePressure) string {
+	inside, band, because := v.inside(), psi(w), ""
+	switch v.Class {
+	case Pass:
+		because = psi(inside) + " inside, and the guard band is " + band
+	case ConditionalPass:
+		because = psi(inside) + " inside, less than the guard band of " + band
+	case ConditionalFail:
+		because = psi(-inside) + " outside, but less than the guard band of " + band
+	case Fail:
+		because = psi(-inside) + " outside, more than the guard band of " + band
+	default:
+		because = "narrower than twice the guard band of " + band + ", so no reading of this gauge could pass"
+	}
+	corrected := ", which is " + psi(v.Corrected) + " at " + fahrenheit(l.Reference)
 	if l.Chart != nil {
-		where = fmt.Sprintf("the charge is %s", psi(v.Corrected))
+		corrected = ", which is " + psi(v.Corrected) + " at the chart's ambient pressure"
 	}
-	v.Sentence = fmt.Sprintf("%s: %s against %s to %s, known to +/-%s with gauge %s; the chance that it is in limits is %s.",
-		strings.ToUpper(v.Class.String()[:1])+v.Class.String()[1:], where, psi(v.Low), psi(v.High), psi(v.U), g.Name, percent(v.Conformance))
+	class := v.Class.String()
+	return strings.ToUpper(class[:1]) + class[1:] + ": gauge " + g.Name + " showed " + psi(r.Gauge) + " at " + fahrenheit(r.Temperature) + " " + temperatureWords[r.TemperatureFrom] +
+		corrected + ", known to +/-" + psi(v.U) + " (k = 2); the limits are " + psi(v.Low) + " to " + psi(v.High) + ": " + because +
+		"; the chance that it is in limits is " + percent(v.Conformance) + "."
 }
 
 func percent(p float64) string {
