@@ -295,10 +295,11 @@ func unlikely(m *ledger.Meaning, u *ledger.Unit, j verdict.Judged) string {
 	}
 	id := u.Work[len(u.Work)-1]
 	last, err := verdict.Judge(m, id, m.Item(id).Body)
-	if err != nil || last.Class == calc.NotAssessable || last.Corrected <= 0 {
+	if err != nil || last.Class == calc.NotAssessable || last.Corrected <= 0 || last.Sheet.ID != j.Sheet.ID {
 		return ""
 	}
-	if x := float64(j.Corrected / last.Corrected); x > 1.2 || x < 0.8 {
+	// A chart's pressures hold at the reading's own temperature, so both are taken against their targets.
+	if x := float64(j.Corrected / j.Target * last.Target / last.Corrected); x > 1.2 || x < 0.8 {
 		return fmt.Sprintf("the corrected pressure of %.0f psi is far from the %.0f psi of this unit's last entry", show(j.Corrected.InUnit("psi")), show(last.Corrected.InUnit("psi")))
 	}
 	return ""
