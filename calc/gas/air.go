@@ -41,5 +41,6 @@ var air = Model{
 		{0.0148287891978, 3.5, 1, 3},
 		{-0.00938782884667, 15, 3, 3},
 	},
+	start:       [5]float64{3.001, -4.253, 0.401, 2.156, -1.928},
 	uncertainty: func(float64, float64) float64 { return 0.001 },
 }

@@ -34,6 +34,7 @@ type Model struct {
 	idealExps    []idealExp
 	terms        []term
 	gauss        []gaussian
+	start        [5]float64 // constants of isotherm.guess
 	uncertainty  func(t, p float64) float64
 }
 
@@ -149,8 +150,8 @@ func (g *Model) density(t, p float64) (Density, error) {
 			lo = rho
 		}
 		step := f / df
-		// Newton doubles the digits: a step of 1e-9 leaves an error near 1e-18.
-		if math.Abs(step) <= 1e-9*rho {
+		// Newton doubles the digits: a step of 1e-8 leaves an error near 1e-16.
+		if math.Abs(step) <= 1e-8*rho {
 			return Density((rho - step) * g.m), nil
 		}
 		next := rho - step
@@ -168,16 +169,15 @@ const maxTerms, maxGauss = 36, 4
 // isotherm is the equation at one temperature: each term's tau part is done once, so that the iteration on density only
 // evaluates polynomials.
 type isotherm struct {
-	g      *Model
-	rt     float64
-	c      [maxTerms]float64
-	gauss  [maxGauss]float64
-	second float64 // second virial coefficient, m3/mol
+	g       *Model
+	rt, tau float64
+	c       [maxTerms]float64
+	gauss   [maxGauss]float64
 }
 
 func (g *Model) fix(iso *isotherm, t float64) {
-	iso.g, iso.rt = g, g.r*t
 	tau := g.tRed / t
+	iso.g, iso.rt, iso.tau = g, g.r*t, tau
 	ln := math.Log(tau)
 	// Most exponents of tau are whole eighths: two short tables of powers cost less than an exponential a term.
 	var eighths [8]float64
@@ -197,9 +197,6 @@ func (g *Model) fix(iso *isotherm, t float64) {
 		} else {
 			iso.c[i] = k.n * math.Exp(k.t*ln)
 		}
-		if k.d == 1 {
-			iso.second += iso.c[i] / g.rhoRed
-		}
 	}
 	for i := range g.gauss {
 		k := &g.gauss[i]
@@ -210,12 +207,13 @@ func (g *Model) fix(iso *isotherm, t float64) {
 	}
 }
 
-// guess starts the iteration from the second virial coefficient, with the higher ones lumped so that it stays on the gas's
-// side at high pressure.
+// guess starts the iteration within some percent, from a compressibility factor rational in the ideal gas's density x. Its
+// constants are fitted to the equation over the tool's range: they save steps and leave no trace in the result.
 func (iso *isotherm) guess(p float64) float64 {
+	c := &iso.g.start
 	rho := p / iso.rt
 	x := rho / iso.g.rhoRed
-	return rho / (1 + iso.second*rho/(1+x) + 0.33*x*x/(1+0.55*x))
+	return rho * (1 + x*(c[3]+c[4]*iso.tau)) / (1 + x*(c[0]+c[1]*iso.tau+c[2]*x))
 }
 
 // pressure returns p and dp/drho at a molar density.
@@ -224,12 +222,12 @@ func (iso *isotherm) pressure(rho float64) (p, dp float64) {
 	delta := rho / g.rhoRed
 	ad, add := iso.derivatives(delta)
 	// p = rho R T (1 + delta ar_d)
-	p = rho * iso.rt * (1 + delta*ad)
-	dp = iso.rt * (1 + 2*delta*ad + delta*delta*add)
+	p = rho * iso.rt * (1 + ad)
+	dp = iso.rt * (1 + 2*ad + add)
 	return p, dp
 }
 
-// derivatives returns the first and second derivative of alphar by delta.
+// derivatives returns delta ar_d and delta^2 ar_dd.
 func (iso *isotherm) derivatives(delta float64) (ad, add float64) {
 	g := iso.g
 	var pow [13]float64 // delta^0 to delta^12
@@ -267,8 +265,5 @@ func (iso *isotherm) derivatives(delta float64) (ad, add float64) {
 		ad += a * x
 		add += a * (x*x - float64(k.d) - 2*k.phi*delta*delta)
 	}
-	if delta > 0 {
-		return ad / delta, add / (delta * delta)
-	}
-	return iso.second * g.rhoRed, 0
+	return ad, add
 }
