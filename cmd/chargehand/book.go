@@ -12,12 +12,11 @@ import (
 	"github.com/spf13/cobra"
 
 	"example.org/chargehand/ledger"
-	"example.org/chargehand/ledger/keys"
 	"example.org/chargehand/ledger/record"
 )
 
 func newBook() *cobra.Command {
-	return group("book", "Start a book, or show this one", newBookStart(), newBookShow())
+	return group("book", "Start a book, join one, or show this one", newBookStart(), newBookJoin(), newBookShow())
 }
 
 func newBookStart() *cobra.Command {
@@ -39,24 +38,28 @@ func newBookStart() *cobra.Command {
 		if err != nil {
 			return err
 		}
-		if _, err := os.Stat(filepath.Join(dir, "book")); err == nil {
-			return couldNot(fmt.Errorf("there is a book in %q already", dir), "Name another folder with --book")
-		}
 		p, err := h.passphrase(cmd, "Choose a passphrase, to sign with: ")
 		if err != nil {
 			return err
 		}
-		if len(p) < 8 {
-			return usageError(fmt.Sprintf("a passphrase of %d characters is too short", len(p)), "Choose 8 or more; several words are easier to type with gloves")
-		}
-		if err := os.MkdirAll(dir, 0o700); err != nil {
+		key, undo, err := newFolder(dir, p)
+		if err != nil {
 			return err
 		}
+		started := false
+		defer func() {
+			if !started {
+				undo()
+			}
+		}()
 		if _, err := rand.Read(f.Nonce[:]); err != nil {
 			return err
 		}
-		key, err := keys.Create(filepath.Join(dir, "key"), p, keys.WorkFactor, rand.Reader)
+		secret, err := newSecret()
 		if err != nil {
+			return err
+		}
+		if err := sealSecret(dir, secret, p); err != nil {
 			return err
 		}
 		b, err := ledger.Found(filepath.Join(dir, "store"), key, f, time.Now)
@@ -67,6 +70,7 @@ func newBookStart() *cobra.Command {
 		if err := os.WriteFile(filepath.Join(dir, "book"), []byte(b.ID().String()+"\n"), 0o600); err != nil {
 			return err
 		}
+		started = true
 		showBook(cmd, b.Meaning(), dir)
 		return nil
 	}
@@ -125,11 +129,7 @@ func newHandList() *cobra.Command {
 		defer func() { err = errors.Join(err, b.Close()) }()
 		m := b.Meaning()
 		for _, hand := range m.Hands {
-			var roles []string
-			for _, r := range hand.Roles {
-				roles = append(roles, string(r))
-			}
-			fmt.Fprintf(cmd.OutOrStdout(), "%s: %s\n", hand.Name, strings.Join(roles, ", "))
+			fmt.Fprintf(cmd.OutOrStdout(), "%s: %s\n", hand.Name, roleList(hand.Roles))
 			for _, k := range hand.Keys {
 				state := "may sign"
 				if !m.InGoodStanding(k) {
@@ -145,27 +145,61 @@ func newHandList() *cobra.Command {
 
 func newHandAdmit() *cobra.Command {
 	var h home
-	var name, certificate, key string
+	var name, certificate, key, listen string
 	var roles []string
-	cmd := &cobra.Command{Use: "admit", Short: "Admit a hand by the public key of their laptop", Args: usageArgs(cobra.NoArgs)}
-	cmd.Flags().StringVar(&name, "name", "", "the person's name")
-	cmd.Flags().StringVar(&certificate, "certificate", "", "their certificate or employee number")
-	cmd.Flags().StringVar(&key, "key", "", "public key, 64 digits, as their laptop shows it")
-	cmd.Flags().StringSliceVar(&roles, "role", nil, "lead, technician, inspector or auditor; several with commas")
-	return signing(cmd, &h, record.KindHandAdmitted, func(*ledger.Meaning, []string) (any, error) {
-		if err := requireFlags(cmd, "name", "key", "role"); err != nil {
+	var byCode, yes bool
+	var lifetime time.Duration
+	cmd := &cobra.Command{Use: "admit", Short: "Admit a hand: by a one-time code read out, or by the public key of their laptop", Args: usageArgs(cobra.NoArgs),
+		Example: "  chargehand hand admit --by-code --role technician"}
+	f := cmd.Flags()
+	f.BoolVar(&byCode, "by-code", false, "show a one-time code and wait for the newcomer's laptop")
+	f.StringSliceVar(&roles, "role", nil, "lead, technician, inspector or auditor; several with commas")
+	f.StringVar(&listen, "listen", "0.0.0.0:0", "with --by-code: where to be reached, host:port")
+	f.DurationVar(&lifetime, "for", 5*time.Minute, "with --by-code: how long the code is good")
+	f.BoolVar(&yes, "yes", false, "with --by-code: say yes to whoever knows the code, without asking; for scripts")
+	f.StringVar(&name, "name", "", "without --by-code: the person's name")
+	f.StringVar(&certificate, "certificate", "", "without --by-code: their certificate or employee number")
+	f.StringVar(&key, "key", "", "without --by-code: public key, 64 digits, from the first line of their key file")
+	given := func() ([]record.Role, error) {
+		if err := requireFlags(cmd, "role"); err != nil {
+			return nil, err
+		}
+		var rs []record.Role
+		for _, r := range roles {
+			role := record.Role(strings.TrimSpace(r))
+			if !role.Known() {
+				return nil, usageError(fmt.Sprintf("--role: %q is not a role", r), "Write lead, technician, inspector or auditor")
+			}
+			rs = append(rs, role)
+		}
+		return rs, nil
+	}
+	signing(cmd, &h, record.KindHandAdmitted, func(*ledger.Meaning, []string) (any, error) {
+		if err := requireFlags(cmd, "name", "key"); err != nil {
+			return nil, err
+		}
+		rs, err := given()
+		if err != nil {
 			return nil, err
 		}
 		k, err := record.ParseKeyID(key)
 		if err != nil {
 			return nil, usageError("--key: "+err.Error(), "Copy it from the first line of their key file")
 		}
-		b := record.HandAdmitted{Name: name, Certificate: certificate, Key: k}
-		for _, r := range roles {
-			b.Roles = append(b.Roles, record.Role(r))
-		}
-		return b, nil
+		return record.HandAdmitted{Name: name, Certificate: certificate, Key: k, Roles: rs}, nil
 	})
+	byKey := cmd.RunE
+	cmd.RunE = func(cmd *cobra.Command, args []string) error {
+		if !byCode {
+			return byKey(cmd, args)
+		}
+		rs, err := given()
+		if err != nil {
+			return err
+		}
+		return invite(cmd, &h, rs, listen, lifetime, yes)
+	}
+	return cmd
 }
 
 func newHandRetire() *cobra.Command {

@@ -18,6 +18,7 @@ import (
 	"example.org/chargehand/ledger"
 	"example.org/chargehand/ledger/keys"
 	"example.org/chargehand/ledger/record"
+	"example.org/chargehand/ledger/verdict"
 )
 
 // home is where this laptop keeps a book: the book's id, this laptop's key, and the store.
@@ -140,11 +141,13 @@ func (h *home) sign(cmd *cobra.Command, b *ledger.Book, dir string, d ledger.Dra
 	if err != nil {
 		return record.Verified{}, err
 	}
+	before := b.Meaning()
 	v, err := b.Author(key, d)
 	if err != nil {
 		return record.Verified{}, explain(err, dir)
 	}
 	fmt.Fprintf(cmd.OutOrStdout(), "signed      entry %s, number %d of your line\n", v.ID().Short(), v.Entry().Seq)
+	tellMoved(cmd.OutOrStdout(), b.Meaning(), verdict.Compare(before, b.Meaning()))
 	return v, nil
 }
 

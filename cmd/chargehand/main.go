@@ -82,6 +82,7 @@ func newRoot() *cobra.Command {
 		newCountersign(),
 		newWithdraw(),
 		newBoard(),
+		newMeet(),
 		newAudit(),
 		newConvert(),
 		newProve(),

@@ -3,10 +3,13 @@ package main
 import (
 	"bytes"
 	"errors"
+	"os"
 	"os/exec"
+	"regexp"
 	"strconv"
 	"strings"
 	"testing"
+	"time"
 
 	"github.com/rogpeppe/go-internal/testscript"
 )
@@ -21,7 +24,8 @@ func TestScripts(t *testing.T) {
 		RequireExplicitExec: true,
 		RequireUniqueNames:  true,
 		Cmds: map[string]func(*testscript.TestScript, bool, []string){
-			"status": status,
+			"status":  status,
+			"waitfor": waitFor,
 		},
 	})
 }
@@ -44,6 +48,31 @@ func status(ts *testscript.TestScript, neg bool, args []string) {
 	if got != want {
 		ts.Fatalf("%q: exit status %d, want %d", args[1:], got, want)
 	}
+}
+
+// waitFor FILE PATTERN [VAR] waits until a line of a file that a background command writes matches, and keeps the
+// pattern's first group in a variable.
+func waitFor(ts *testscript.TestScript, neg bool, args []string) {
+	if neg || len(args) < 2 || len(args) > 3 {
+		ts.Fatalf("usage: waitfor file pattern [var]")
+	}
+	pattern, err := regexp.Compile("(?m)" + args[1])
+	ts.Check(err)
+	look := time.NewTicker(20 * time.Millisecond)
+	defer look.Stop()
+	for deadline := time.Now().Add(time.Minute); time.Now().Before(deadline); <-look.C {
+		data, err := os.ReadFile(ts.MkAbs(args[0]))
+		if err != nil {
+			continue // not there yet
+		}
+		if m := pattern.FindSubmatch(data); m != nil {
+			if len(args) == 3 {
+				ts.Setenv(args[2], string(m[1]))
+			}
+			return
+		}
+	}
+	ts.Fatalf("no line of %s matches %q: %s", args[0], args[1], ts.ReadFile(args[0]))
 }
 
 // Nonsense is refused with status 2, the value quoted, and what to do.

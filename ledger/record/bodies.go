@@ -35,6 +35,15 @@ const (
 	RoleAuditor    Role = "auditor"
 )
 
+// Known tells whether this version knows the role.
+func (r Role) Known() bool {
+	switch r {
+	case RoleLead, RoleTechnician, RoleInspector, RoleAuditor:
+		return true
+	}
+	return false
+}
+
 // Amount is a value as a person typed it: Mantissa x 10^Exponent Unit.
 type Amount struct {
 	_        struct{} `cbor:",toarray"`

@@ -7,15 +7,19 @@ import (
 	"slices"
 	"unicode"
 	"unicode/utf8"
+
+	"github.com/fxamacker/cbor/v2"
 )
 
-// EncodeBody returns a body's deterministic CBOR after checking it. The error is ErrMalformed with what is wrong.
+// EncodeBody returns a body's deterministic CBOR after checking it. The error is ErrMalformed with what is wrong, or for an
+// Unknown also ErrNotCanonical.
 func EncodeBody(kind Kind, body any) ([]byte, error) {
-	if u, ok := body.(Unknown); ok {
-		return u.Raw, nil
+	empty, known := newBody[kind]
+	if u, ok := body.(Unknown); ok && !known {
+		return u.Raw, checkUnknown(u.Raw)
 	}
-	if want, ok := newBody[kind]; !ok || reflect.TypeOf(want()).Elem() != reflect.TypeOf(body) {
-		return nil, fmt.Errorf("%w: a %T is not the body of a %q", ErrMalformed, body, kind)
+	if !known || reflect.TypeOf(empty()).Elem() != reflect.TypeOf(body) {
+		return nil, malformed("a %T is not the body of a %q", body, kind)
 	}
 	if err := checkBody(body); err != nil {
 		return nil, err
@@ -25,16 +29,55 @@ func EncodeBody(kind Kind, body any) ([]byte, error) {
 
 // DecodeBody reads the body of a kind, strictly. A kind that is not known gives Unknown.
 func DecodeBody(kind Kind, raw []byte) (any, error) {
-	make, ok := newBody[kind]
-	if !ok {
+	empty, known := newBody[kind]
+	if !known {
+		if err := checkUnknown(raw); err != nil {
+			return nil, err
+		}
 		return Unknown{slices.Clone(raw)}, nil
 	}
-	into := make()
+	into := empty()
 	if err := strict(raw, into); err != nil {
 		return nil, err
 	}
 	body := reflect.ValueOf(into).Elem().Interface()
-	return body, checkBody(body)
+	if err := checkBody(body); err != nil {
+		return nil, err
+	}
+	return body, nil
+}
+
+// checkUnknown holds a body that cannot be understood to what every kind keeps, now and later: a deterministic map with
+// unsigned integer keys, and no floats.
+func checkUnknown(raw []byte) error {
+	var fields map[uint64]cbor.RawMessage
+	if err := decoding.Unmarshal(raw, &fields); err != nil || fields == nil {
+		return malformed("the body is not a map with integer keys")
+	}
+	var v any
+	if err := strict(raw, &v); err != nil {
+		return err
+	}
+	if hasFloat(v) {
+		return malformed("the body holds a float")
+	}
+	return nil
+}
+
+func hasFloat(v any) bool {
+	switch v := v.(type) {
+	case float64:
+		return true
+	case []any:
+		return slices.ContainsFunc(v, hasFloat)
+	case map[any]any:
+		for k, e := range v {
+			if hasFloat(k) || hasFloat(e) {
+				return true
+			}
+		}
+	}
+	return false
 }
 
 var newBody = map[Kind]func() any{
@@ -86,11 +129,17 @@ func (a Amount) check(name string) error {
 }
 
 func (t Time) check() error {
-	if t.OffsetMin < -maxOffset || t.OffsetMin > maxOffset || t.Unix < 0 || t.Unix > 1<<38 {
+	if t.OffsetMin < -maxOffset || t.OffsetMin > maxOffset || t.Unix < 0 || t.Unix > maxUnix {
 		return malformed("the time %d with offset %d min cannot be", t.Unix, t.OffsetMin)
 	}
 	return nil
 }
+
+// maxSoak is in minutes, some 69 days: beyond it a soak says nothing, and a duration could overflow.
+const maxSoak = 100_000
+
+// optionalID are the ids that may be absent.
+var optionalID = []string{"LastID", "Sheet"}
 
 // optionalText are the text fields that may be empty; all others must say something.
 var optionalText = []string{"Certificate", "Note", "Override", "Construction", "Valve", "Torque"}
@@ -115,12 +164,30 @@ func checkBody(body any) error {
 		if (b.Charge == nil) == (len(b.Chart) == 0) {
 			return malformed("a sheet holds a reference charge or a chart, one of the two")
 		}
-		if b.Charge != nil && (b.Minus == nil || b.Plus == nil) {
-			return malformed("the reference charge has no tolerance")
+		if (b.Charge == nil) != (b.Minus == nil) || (b.Charge == nil) != (b.Plus == nil) {
+			return malformed("a reference charge has a tolerance below and above it, and a chart has none")
+		}
+	case Gauge:
+		if b.Due.Unix < b.Calibrated.Unix {
+			return malformed("the calibration is due before it was done")
+		}
+	case Correction:
+		// What may correct what is the book's question; that the body is one of its kind is asked here, so that nothing
+		// with a float or a bad text hides in it.
+		if b.Kind == KindCorrection {
+			return malformed("a correction of a correction; correct the entry itself once more")
+		}
+		if _, err := DecodeBody(b.Kind, b.Body); err != nil {
+			return fmt.Errorf("corrected %s: %w", b.Kind, err)
 		}
 	case Countersign:
 		if len(b.Of) == 0 || len(b.Of) > 100 {
 			return malformed("it countersigns %d entries", len(b.Of))
+		}
+		for i, id := range b.Of {
+			if id == (ID{}) || slices.Contains(b.Of[:i], id) {
+				return malformed("it countersigns %s twice, or nothing", id.Short())
+			}
 		}
 	case Reading:
 		return checkFrom(b.TemperatureFrom)
@@ -145,6 +212,20 @@ func checkFields(v reflect.Value) error {
 			err = x.check(name)
 		case Time:
 			err = x.check()
+		case ID:
+			if x == (ID{}) && !slices.Contains(optionalID, name) {
+				err = malformed("%s names no entry", name)
+			}
+		case KeyID:
+			if x == (KeyID{}) {
+				err = malformed("%s names no key", name)
+			}
+		case uint64:
+			if name == "SoakMin" && x > maxSoak {
+				err = malformed("a soak of %d minutes; at most %d", x, maxSoak)
+			}
+		case Kind:
+			err = checkText(name, string(x), true)
 		case string:
 			err = checkText(name, x, !slices.Contains(optionalText, name))
 		case UnitRef:
@@ -169,7 +250,7 @@ func checkFields(v reflect.Value) error {
 
 func checkRoles(roles []Role) error {
 	for i, r := range roles {
-		if !slices.Contains([]Role{RoleLead, RoleTechnician, RoleInspector, RoleAuditor}, r) || slices.Contains(roles[:i], r) {
+		if !r.Known() || slices.Contains(roles[:i], r) {
 			return malformed("role %q", r)
 		}
 	}

@@ -20,7 +20,29 @@
 //	8  what the signer was shown: [verdict, corrected pressure, core version]; absent where there was none
 //
 // There are no floats: an amount is [mantissa, exponent, unit] as the person typed it. Bytes are kept as they came and must
-// be what this package would have written.
+// be what this package would have written: shortest integers, sorted keys, no key twice, definite lengths, no tag but the
+// first, no key that its kind does not have. The body of a kind that is not known here is held to the same rules and kept as
+// Unknown. Texts are UTF-8 of 1 to 2,000 bytes without control characters; a text that says nothing takes no key.
+//
+// One entry, a withdrawal, written out (ExampleVerify checks these bytes):
+//
+//	d2 84                                            # COSE_Sign1: tag 18, an array of 4
+//	   58 46 a3                                      # protected header, 70 bytes, a map of 3
+//	      01 27                                      # 1 algorithm: -8, EdDSA
+//	      03 78 1b 6170706c69636174696f6e2f...       # 3 content type: "application/chargehand+cbor"
+//	      04 58 20 d75a980182b10ab7d54bfed3...       # 4 key id: the public key
+//	   a0                                            # unprotected header, empty
+//	   58 64 a7                                      # payload, 100 bytes, a map of 7
+//	      01 02                                      # 1 number 2 of its line
+//	      02 58 20 01000000...                       # 2 the line's entry before
+//	      03 80                                      # 3 nothing new was seen of other lines
+//	      04 82 1a 730956a7 18 78                    # 4 signed at 1930000039 s, 120 min east
+//	      05 82 1b 000001c15d58da7b 04               # 5 clock 1930000000635 ms, count 4
+//	      06 6a 7769746864726177616c                 # 6 kind: "withdrawal"
+//	      07 a2                                      # 7 body, a map of 2
+//	         01 58 20 07000000...                    #   1 the entry withdrawn
+//	         02 ...                                  #   2 the reason
+//	   58 40 ...                                     # signature, 64 bytes
 package record
 
 import (
@@ -167,16 +189,33 @@ func external(book BookID, kind Kind) []byte {
 	return book[:]
 }
 
-// Sign makes an entry. For a founding entry the book's id is not used. The error is ErrMalformed with what is wrong in the
-// entry, or ErrTooLarge.
-func Sign(key ed25519.PrivateKey, book BookID, e Entry) (Verified, error) {
+// join makes an entry's bytes from its signed parts.
+func join(protected, data, signature []byte) ([]byte, error) {
+	raw, err := encoding.Marshal(message{Protected: protected, Payload: data, Signature: [ed25519.SignatureSize]byte(signature)})
+	return append([]byte{coseSign1}, raw...), err
+}
+
+// encode returns an entry's payload after checking it.
+func encode(e Entry) ([]byte, error) {
+	if err := e.check(); err != nil {
+		return nil, err
+	}
 	body, err := EncodeBody(e.Kind, e.Body)
 	if err != nil {
-		return Verified{}, err
+		return nil, fmt.Errorf("%s: %w", e.Kind, err)
 	}
-	data, err := encoding.Marshal(payload{e.Seq, e.Prev, e.Seen, e.Signed, e.Clock, e.Kind, body, e.Shown})
+	return encoding.Marshal(payload{e.Seq, e.Prev, e.Seen, e.Signed, e.Clock, e.Kind, body, e.Shown})
+}
+
+// Sign makes an entry. For a founding entry the book's id is not used. The error is ErrMalformed with what is wrong in the
+// entry, ErrTooLarge, or ErrWeakKey for what is no Ed25519 private key.
+func Sign(key ed25519.PrivateKey, book BookID, e Entry) (Verified, error) {
+	if len(key) != ed25519.PrivateKeySize {
+		return Verified{}, ErrWeakKey
+	}
+	data, err := encode(e)
 	if err != nil {
-		return Verified{}, fmt.Errorf("%w: %w", ErrMalformed, err)
+		return Verified{}, err
 	}
 	kid := KeyID(key.Public().(ed25519.PublicKey))
 	protected, err := encoding.Marshal(header{algEdDSA, contentType, kid})
@@ -187,12 +226,10 @@ func Sign(key ed25519.PrivateKey, book BookID, e Entry) (Verified, error) {
 	if err != nil {
 		return Verified{}, err
 	}
-	m := message{Protected: protected, Payload: data, Signature: [64]byte(ed25519.Sign(key, tbs))}
-	raw, err := encoding.Marshal(m)
+	raw, err := join(protected, data, ed25519.Sign(key, tbs))
 	if err != nil {
 		return Verified{}, err
 	}
-	raw = append([]byte{coseSign1}, raw...)
 	if e.Kind == KindFounding {
 		return VerifyFounding(raw)
 	}
@@ -275,6 +312,8 @@ const (
 	maxText   = 2000
 	maxSeen   = 1000
 	maxOffset = 14 * 60
+	maxUnix   = 1 << 38 // seconds, in the year 10680: far from where arithmetic on times would overflow
+	maxWall   = maxUnix * 1000
 )
 
 func (e *Entry) check() error {
@@ -288,7 +327,7 @@ func (e *Entry) check() error {
 		return bad("a founding entry that has something before it")
 	case len(e.Seen) > maxSeen:
 		return bad("it names %d heads", len(e.Seen))
-	case e.Clock.Wall < 0:
+	case e.Clock.Wall < 0 || e.Clock.Wall > maxWall:
 		return bad("its clock shows %d", e.Clock.Wall)
 	}
 	if err := e.Signed.check(); err != nil {
