@@ -11,8 +11,8 @@ import (
 	"github.com/fxamacker/cbor/v2"
 )
 
-// EncodeBody returns a body's deterministic CBOR after checking it. The error is ErrMalformed with what is wrong, or for an
-// Unknown also ErrNotCanonical.
+// EncodeBody returns a body's deterministic CBOR after checking it. The error is ErrMalformed with what is wrong;
+// for an Unknown and for the body in a Correction also ErrNotCanonical.
 func EncodeBody(kind Kind, body any) ([]byte, error) {
 	empty, known := newBody[kind]
 	if u, ok := body.(Unknown); ok && !known {

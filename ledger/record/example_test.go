@@ -25,5 +25,6 @@ func ExampleVerify() {
 	_, err = record.Verify(raw, record.BookID{0xb1})
 	fmt.Println(err)
 	// Output:
-	// X
+	// 4c23af8b of d75a9801 number 2 withdraws 07000000: wrong unit
+	// the signature does not fit the entry and this book
 }

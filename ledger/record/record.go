@@ -27,22 +27,22 @@
 // One entry, a withdrawal, written out (ExampleVerify checks these bytes):
 //
 //	d2 84                                            # COSE_Sign1: tag 18, an array of 4
-//	   58 46 a3                                      # protected header, 70 bytes, a map of 3
+//	   58 44 a3                                      # protected header, 68 bytes, a map of 3
 //	      01 27                                      # 1 algorithm: -8, EdDSA
 //	      03 78 1b 6170706c69636174696f6e2f...       # 3 content type: "application/chargehand+cbor"
 //	      04 58 20 d75a980182b10ab7d54bfed3...       # 4 key id: the public key
 //	   a0                                            # unprotected header, empty
-//	   58 64 a7                                      # payload, 100 bytes, a map of 7
+//	   58 be a7                                      # payload, 190 bytes, a map of 7
 //	      01 02                                      # 1 number 2 of its line
 //	      02 58 20 01000000...                       # 2 the line's entry before
-//	      03 80                                      # 3 nothing new was seen of other lines
-//	      04 82 1a 730956a7 18 78                    # 4 signed at 1930000039 s, 120 min east
-//	      05 82 1b 000001c15d58da7b 04               # 5 clock 1930000000635 ms, count 4
+//	      03 82 58 20 02000000... 58 20 03000000...  # 3 heads of two other lines, seen since
+//	      04 82 1a 73097680 18 78                    # 4 signed at 1930000000 s, 120 min east
+//	      05 82 1b 000001c15cf6e47b 04               # 5 clock 1930000000123 ms, count 4
 //	      06 6a 7769746864726177616c                 # 6 kind: "withdrawal"
 //	      07 a2                                      # 7 body, a map of 2
 //	         01 58 20 07000000...                    #   1 the entry withdrawn
-//	         02 ...                                  #   2 the reason
-//	   58 40 ...                                     # signature, 64 bytes
+//	         02 6a 77726f6e6720756e6974              #   2 the reason: "wrong unit"
+//	   58 40 fdcc18ec...                             # signature, 64 bytes
 package record
 
 import (
@@ -64,7 +64,7 @@ const MaxSize = 16 << 10
 var (
 	ErrTooLarge     = errors.New("the entry is larger than 16 KiB")
 	ErrMalformed    = errors.New("the entry is malformed")
-	ErrNotCanonical = errors.New("the entry is not in its one deterministic encoding")
+	ErrNotCanonical = errors.New("the entry is not in its one deterministic encoding") // a key is missing, too long, out of order
 	ErrSignature    = errors.New("the signature does not fit the entry and this book")
 	ErrWrongBook    = errors.New("the entry founds another book")
 	ErrWeakKey      = errors.New("the key is not a full-strength Ed25519 public key")
@@ -149,7 +149,7 @@ type payload struct {
 }
 
 var (
-	encoding = must(cbor.EncOptions{Sort: cbor.SortCoreDeterministic, ShortestFloat: cbor.ShortestFloatNone, IndefLength: cbor.IndefLengthForbidden, NilContainers: cbor.NilContainerAsEmpty}.EncMode())
+	encoding = must(cbor.EncOptions{Sort: cbor.SortCoreDeterministic, ShortestFloat: cbor.ShortestFloat16, IndefLength: cbor.IndefLengthForbidden, NilContainers: cbor.NilContainerAsEmpty}.EncMode())
 	decoding = must(cbor.DecOptions{DupMapKey: cbor.DupMapKeyEnforcedAPF, IndefLength: cbor.IndefLengthForbidden, ExtraReturnErrors: cbor.ExtraDecErrorUnknownField, MaxNestedLevels: 8, MaxArrayElements: 1024, MaxMapPairs: 64, TagsMd: cbor.TagsForbidden, UTF8: cbor.UTF8RejectInvalid}.DecMode())
 )
 
