@@ -17,6 +17,7 @@ const (
 	frameBatch = 3 // entries, each behind its length in two bytes
 	frameEnd   = 4 // the sender has no more in this round
 	frameTook  = 5 // what the receiver took so far in this round
+	frameBye   = 6 // the sender has read all and will say no more
 )
 
 // Bounds on what a peer can make this laptop hold. A batch at its largest takes about three times maxBatch while it is verified.
@@ -42,7 +43,7 @@ func maxPayload(kind byte) (int, bool) {
 		return maxLines * headSize, true
 	case frameBatch:
 		return maxBatch, true
-	case frameEnd:
+	case frameEnd, frameBye:
 		return 0, true
 	case frameTook:
 		return tookSize, true

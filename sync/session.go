@@ -7,6 +7,9 @@
 //	heads  the frontier: key, sequence and id of the newest entry of each line
 //	batch  the entries that the other side lacks, causes before effects, in bounded batches; then end
 //	took   the receiver's running receipt: new, held already, waiting for an entry that they name
+//	bye    the sender has read the peer's last word; whoever has read this may hang up
+//
+// Nobody hangs up before the other's bye: a connection closed with bytes on their way would take the peer's last frame with it.
 //
 // A round that moved anything is followed by another, which as a rule finds equal books. Where a line is forked the first
 // round may carry one branch only: the second, in which both know of both, carries the other.
@@ -94,7 +97,9 @@ func (s *Session) Run(ctx context.Context, rw io.ReadWriteCloser) (Report, error
 	c := &conversation{book: s.Book, cancel: cancel, report: Report{Sent: map[record.KeyID]int{}, Received: map[record.KeyID]int{}}}
 	err := c.open(alive)
 	if err == nil {
-		err = c.run(ctx)
+		if err = c.run(ctx); err == nil {
+			c.farewell()
+		}
 		c.dec.Close()
 	}
 	if cause := context.Cause(ctx); cause != nil && err != nil {
@@ -190,6 +195,13 @@ func (c *conversation) run(ctx context.Context) error {
 		}
 	}
 	return nil
+}
+
+// farewell waits until the peer has read all. The outcome stands by now: an error here changes nothing.
+func (c *conversation) farewell() {
+	_ = c.both(
+		func() error { return c.write(frameBye, nil) },
+		func() error { _, err := c.expect(frameBye); return err })
 }
 
 func idOf(b Book) []byte { id := b.ID(); return id[:] }

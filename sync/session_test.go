@@ -339,7 +339,7 @@ func TestCutAtEveryByteThenResume(t *testing.T) {
 		if !c.cut { // receipts run together now and then, and the whole is a little shorter
 			continue
 		}
-		if x.err == nil {
+		if x.err == nil && !x.report.Equal { // in the farewell a cut costs nothing
 			t.Fatalf("cut at %d of %d: no error here", at, whole)
 		}
 		if y.err != nil && !errors.Is(y.err, sync.ErrCut) {
