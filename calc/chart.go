@@ -66,6 +66,9 @@ func (c *Chart) At(t quantity.Temperature) (low, charge, high quantity.GaugePres
 	return mix(a.Low, b.Low), mix(a.Charge, b.Charge), mix(a.High, b.High), nil
 }
 
+// Rows returns the rows, from the coldest.
+func (c *Chart) Rows() []ChartRow { return slices.Clone(c.rows) }
+
 // Misfit is a chart row that does not lie on the isochore through the chart as a whole: the usual typing error.
 type Misfit struct {
 	Row      ChartRow

@@ -39,6 +39,7 @@ type boardRow struct {
 	Read         string  `json:"read,omitempty"`
 	Entry        string  `json:"entry,omitempty"`
 	Next         string  `json:"next"`
+	judged       verdict.Judged
 	urgency      int
 }
 
@@ -54,7 +55,7 @@ func newBoard() *cobra.Command {
 			return err
 		}
 		defer func() { err = errors.Join(err, b.Close()) }()
-		rows := board(b.Meaning())
+		rows, in := board(b.Meaning()), unitsOf(b.Meaning())
 		if asJSON {
 			return writeJSON(cmd.OutOrStdout(), rows)
 		}
@@ -66,7 +67,7 @@ func newBoard() *cobra.Command {
 				where = r.Aircraft + ", " + r.Position
 			}
 			if r.CorrectedPsi != 0 {
-				corrected, limits = fmt.Sprintf("%.0f psi", r.CorrectedPsi), fmt.Sprintf("%.0f to %.0f psi", r.LowPsi, r.HighPsi)
+				corrected, limits = in.pressure(r.judged.Corrected), in.between(r.judged.Low, r.judged.High)
 			}
 			fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\t%s\t%.8s\t%s\n", r.Verdict, r.Unit, where, corrected, limits, r.Read, r.Entry, r.Next)
 		}
@@ -84,9 +85,9 @@ func board(m *ledger.Meaning) []boardRow {
 			body := m.Item(id).Body
 			if j, err := verdict.Judge(m, id, body); err == nil { // a unit's work always has a verdict
 				at, _ := ledger.Done(body)
-				r.Verdict, r.Next, r.Read, r.Entry, r.urgency = j.Class.String(), j.Next, clock(at), id.String(), urgency(&j)
+				r.Verdict, r.Next, r.Read, r.Entry, r.judged, r.urgency = j.Class.String(), j.Next, clock(at), id.String(), j, urgency(&j)
 				if j.Class != calc.NotAssessable {
-					r.CorrectedPsi, r.LowPsi, r.HighPsi = show(j.Corrected.InUnit("psi")), show(j.Low.InUnit("psi")), show(j.High.InUnit("psi"))
+					r.CorrectedPsi, r.LowPsi, r.HighPsi = inPsi(j.Corrected), inPsi(j.Low), inPsi(j.High)
 				}
 			}
 		}

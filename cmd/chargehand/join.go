@@ -157,7 +157,7 @@ func newBookJoin() *cobra.Command {
 	cmd.Flags().StringVar(&to, "to", "", "address that the lead's laptop shows, host:port (else it is looked for)")
 	cmd.Flags().DurationVar(&wait, "for", 5*time.Minute, "how long to try")
 	cmd.RunE = func(cmd *cobra.Command, _ []string) (err error) {
-		if err := requireFlags(cmd, "code", "name"); err != nil {
+		if err := fill(cmd, nil, needs("code", "name")...); err != nil {
 			return err
 		}
 		c, err := join.Parse(code)

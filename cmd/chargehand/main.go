@@ -79,7 +79,9 @@ func newRoot() *cobra.Command {
 		newUnit(),
 		newGauge(),
 		newCheck(),
+		newCharge(),
 		newCountersign(),
+		newCorrect(),
 		newWithdraw(),
 		newBoard(),
 		newMeet(),
@@ -140,14 +142,4 @@ func flagError(cmd *cobra.Command, err error) error {
 		return usageError(fmt.Sprintf("--%s: %s", invalid.GetFlag().Name, v.what), v.todo)
 	}
 	return usageError(fmt.Sprintf("--%s: %q is not a value for it", invalid.GetFlag().Name, invalid.GetValue()), see)
-}
-
-// requireFlags names the first missing flag.
-func requireFlags(cmd *cobra.Command, names ...string) error {
-	for _, name := range names {
-		if f := cmd.Flags().Lookup(name); !f.Changed {
-			return usageError(fmt.Sprintf("--%s is missing", name), fmt.Sprintf("Give it: --%s %s, %s", name, f.Value.Type(), f.Usage))
-		}
-	}
-	return nil
 }
