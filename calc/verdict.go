@@ -82,6 +82,7 @@ type Limits struct {
 	Rated               quantity.GaugePressure // of the charging valve; 0 not known
 	SystemPressure      quantity.GaugePressure // 0 not known
 	TempLow, TempHigh   quantity.Temperature   // 0 none
+	In                  Units                  // of the words
 }
 
 // Rule is how a value near a limit is decided (ILAC-G8:09/2019, JCGM 106): by a guard band of so many standard
@@ -236,10 +237,10 @@ func obstacles(l Limits, g Gauge, r Reading, target quantity.GaugePressure) []ob
 	case strings.TrimSpace(r.Relieved.How) == "" || !r.Relieved.Seen:
 		add("relieve the fluid side and note how, and the pressure seen there", "it is not said how the fluid side was relieved and what pressure was seen there")
 	case !(r.Relieved.FluidPressure <= relievedBelow):
-		add(relieve, "hydraulic pressure was not relieved: %s on the fluid side", psi(r.Relieved.FluidPressure))
+		add(relieve, "hydraulic pressure was not relieved: %s on the fluid side", l.In.Pressure(r.Relieved.FluidPressure))
 	}
 	if s := l.SystemPressure; s > 0 && target < s*highCharge && math.Abs(float64(r.Gauge-s)) < nearSystem*float64(s) {
-		add(relieve, "the reading of %s agrees with system pressure %s: the gauge is then reading the fluid", psi(r.Gauge), psi(s))
+		add(relieve, "the reading of %s agrees with system pressure %s: the gauge is then reading the fluid", l.In.Pressure(r.Gauge), l.In.Pressure(s))
 	}
 	if !g.InCalibration {
 		note := ""
@@ -258,7 +259,7 @@ func obstacles(l Limits, g Gauge, r Reading, target quantity.GaugePressure) []ob
 		add("register the gauge's certificate again", "the certificate of gauge %s has a figure that is no number", g.Name)
 	}
 	if !(r.Gauge > 0 && r.Gauge >= g.SpanLow && r.Gauge <= g.Span) {
-		add("use a gauge whose span holds the pressure", "the reading of %s is outside the gauge's span of %s to %s", psi(r.Gauge), psi(g.SpanLow), psi(g.Span))
+		add("use a gauge whose span holds the pressure", "the reading of %s is outside the gauge's span of %s to %s", l.In.Pressure(r.Gauge), l.In.Pressure(g.SpanLow), l.In.Pressure(g.Span))
 	}
 	if !(r.Ambient >= 20_000 && r.Ambient <= 115_000 && l.Ambient >= 20_000 && l.Ambient <= 115_000) {
 		add("enter the station pressure, not reduced to sea level", "the ambient pressure of %.0f hPa, or the sheet's of %.0f hPa, is none on Earth", r.Ambient/100, l.Ambient/100)
@@ -274,13 +275,13 @@ func obstacles(l Limits, g Gauge, r Reading, target quantity.GaugePressure) []ob
 		add("take the gas temperature: a probe on the shell, or the air after a soak", "the gas temperature is not known")
 	}
 	if l.Rated > 0 && r.Gauge > l.Rated {
-		add("bleed below the valve's rating and follow the manual on a valve that was over-pressed", "the charging valve is rated %s, below the reading of %s", psi(l.Rated), psi(r.Gauge))
+		add("bleed below the valve's rating and follow the manual on a valve that was over-pressed", "the charging valve is rated %s, below the reading of %s", l.In.Pressure(l.Rated), l.In.Pressure(r.Gauge))
 	}
 	if l.TempLow > 0 && r.Temperature < l.TempLow {
-		add("let the unit warm into the sheet's range", "the gas temperature of %s is below the sheet's least, %s", fahrenheit(r.Temperature), fahrenheit(l.TempLow))
+		add("let the unit warm into the sheet's range", "the gas temperature of %s is below the sheet's least, %s", l.In.Temperature(r.Temperature), l.In.Temperature(l.TempLow))
 	}
 	if l.TempHigh > 0 && r.Temperature > l.TempHigh {
-		add("let the unit cool into the sheet's range", "the gas temperature of %s is above the sheet's highest, %s", fahrenheit(r.Temperature), fahrenheit(l.TempHigh))
+		add("let the unit cool into the sheet's range", "the gas temperature of %s is above the sheet's highest, %s", l.In.Temperature(r.Temperature), l.In.Temperature(l.TempHigh))
 	}
 	return why
 }
@@ -325,22 +326,22 @@ func (v *comparison) next(l Limits, g Gauge, r Reading, rule Rule, reading quant
 	case Pass:
 		return "nothing; the charge is in limits"
 	case ConditionalPass:
-		return v.trim(l, g, r) + ", to bring it clear of the limit, as the manual allows; " + v.better(r, rule, reading, v.inside())
+		return v.trim(l, g, r) + ", to bring it clear of the limit, as the manual allows; " + v.better(l, r, rule, reading, v.inside())
 	case ConditionalFail:
-		return v.trim(l, g, r) + "; " + v.better(r, rule, reading, -v.inside())
+		return v.trim(l, g, r) + "; " + v.better(l, r, rule, reading, -v.inside())
 	case NotMeasurable:
 		room := min(v.Target-v.Low, v.High-v.Target) // what passes a charge on target
 		if room == 0 {
 			room = (v.High - v.Low) / 2
 		}
-		return v.better(r, rule, reading, room)
+		return v.better(l, r, rule, reading, room)
 	}
 	return v.trim(l, g, r) + "; then look for the cause, and remove from service if the manual says so"
 }
 
 // trim says by how much to charge or bleed to the target, as this gauge would show it here and now, once settled.
 func (v *comparison) trim(l Limits, g Gauge, r Reading) string {
-	target, what := v.Target.Abs(l.Ambient), fmt.Sprintf("on gauge %s at %s", g.Name, fahrenheit(r.Temperature))
+	target, what := v.Target.Abs(l.Ambient), fmt.Sprintf("on gauge %s at %s", g.Name, l.In.Temperature(r.Temperature))
 	var err error
 	if l.Chart == nil {
 		target, err = Correct(l.Gas, target, l.Reference, r.Temperature)
@@ -352,54 +353,54 @@ func (v *comparison) trim(l Limits, g Gauge, r Reading) string {
 	dial -= g.corrected(dial) - dial // what the dial shows there; corrections change slowly along it
 	switch {
 	case l.Rated > 0 && dial > l.Rated:
-		return fmt.Sprintf("do not charge: the valve is rated %s, below the %s needed at %s", psi(l.Rated), psi(dial), fahrenheit(r.Temperature))
+		return fmt.Sprintf("do not charge: the valve is rated %s, below the %s needed at %s", l.In.Pressure(l.Rated), l.In.Pressure(dial), l.In.Temperature(r.Temperature))
 	case dial > g.Span:
-		return fmt.Sprintf("charge with another gauge: %s is needed at %s and gauge %s ends at %s", psi(dial), fahrenheit(r.Temperature), g.Name, psi(g.Span))
+		return fmt.Sprintf("charge with another gauge: %s is needed at %s and gauge %s ends at %s", l.In.Pressure(dial), l.In.Temperature(r.Temperature), g.Name, l.In.Pressure(g.Span))
 	case dial < r.Gauge:
-		return fmt.Sprintf("bleed by about %s, to %s %s once settled", psi(r.Gauge-dial), psi(dial), what)
+		return fmt.Sprintf("bleed by about %s, to %s %s once settled", l.In.Pressure(r.Gauge-dial), l.In.Pressure(dial), what)
 	}
-	return fmt.Sprintf("charge by about %s, to %s %s once settled", psi(dial-r.Gauge), psi(dial), what)
+	return fmt.Sprintf("charge by about %s, to %s %s once settled", l.In.Pressure(dial-r.Gauge), l.In.Pressure(dial), what)
 }
 
 // better names a gauge whose guard band would leave the room free, or says what stands in the way of any.
-func (v *comparison) better(r Reading, rule Rule, reading, room quantity.GaugePressure) string {
+func (v *comparison) better(l Limits, r Reading, rule Rule, reading, room quantity.GaugePressure) string {
 	byP := quantity.GaugePressure(v.ref.DpDRho / v.at.DpDRho)
 	others := v.Budget[3:] // all but the gauge's own
-	if b := betterGauge(reading, r.Temperature, combined(others)/byP, room/rule.guard()/byP); b != nil {
-		return fmt.Sprintf("to decide, read again with a better gauge: %s, 0 to %s, divisions of %s or finer", b.Accuracy, psi(b.Span), psi(b.Graduation))
+	if b := betterGauge(l.In, reading, r.Temperature, combined(others)/byP, room/rule.guard()/byP); b != nil {
+		return fmt.Sprintf("to decide, read again with a better gauge: %s, 0 to %s, divisions of %s or finer", b.Accuracy, l.In.Pressure(b.Span), l.In.Pressure(b.Graduation))
 	}
 	worst := slices.MaxFunc(others, func(a, b Term) int { return cmp.Compare(a.U, b.U) })
 	soak := ""
 	if worst.Name == gasTemperature && r.TemperatureFrom == AmbientAfterSoak {
 		soak = "; repeat after a longer soak or with a shell probe"
 	}
-	return fmt.Sprintf("no better gauge alone would decide: %s leaves +/-%s%s", worst.Name, psi(rule.guard()*worst.U), soak)
+	return fmt.Sprintf("no better gauge alone would decide: %s leaves +/-%s%s", worst.Name, l.In.Pressure(rule.guard()*worst.U), soak)
 }
 
 var temperatureWords = map[TemperatureSource]string{ShellProbe: "by a probe on the shell", AmbientAfterSoak: "by the air after a soak"}
 
 // sentence explains the verdict with its numbers to somebody who was not there.
 func (v *comparison) sentence(l Limits, g Gauge, r Reading, w quantity.GaugePressure) string {
-	inside, band, because := v.inside(), psi(w), ""
+	inside, band, because := v.inside(), l.In.Pressure(w), ""
 	switch v.Class {
 	case Pass:
-		because = psi(inside) + " inside, and the guard band is " + band
+		because = l.In.Pressure(inside) + " inside, and the guard band is " + band
 	case ConditionalPass:
-		because = psi(inside) + " inside, less than the guard band of " + band
+		because = l.In.Pressure(inside) + " inside, less than the guard band of " + band
 	case ConditionalFail:
-		because = psi(-inside) + " outside, but less than the guard band of " + band
+		because = l.In.Pressure(-inside) + " outside, but less than the guard band of " + band
 	case Fail:
-		because = psi(-inside) + " outside, more than the guard band of " + band
+		because = l.In.Pressure(-inside) + " outside, more than the guard band of " + band
 	default:
 		because = "narrower than twice the guard band of " + band + ", so no reading of this gauge could pass"
 	}
-	corrected := ", which is " + psi(v.Corrected) + " at " + fahrenheit(l.Reference)
+	corrected := ", which is " + l.In.Pressure(v.Corrected) + " at " + l.In.Temperature(l.Reference)
 	if l.Chart != nil {
-		corrected = ", which is " + psi(v.Corrected) + " at the chart's ambient pressure"
+		corrected = ", which is " + l.In.Pressure(v.Corrected) + " at the chart's ambient pressure"
 	}
 	class := v.Class.String()
-	return strings.ToUpper(class[:1]) + class[1:] + ": gauge " + g.Name + " showed " + psi(r.Gauge) + " at " + fahrenheit(r.Temperature) + " " + temperatureWords[r.TemperatureFrom] +
-		corrected + ", known to +/-" + psi(v.U) + " (k = 2); the limits are " + psi(v.Low) + " to " + psi(v.High) + ": " + because +
+	return strings.ToUpper(class[:1]) + class[1:] + ": gauge " + g.Name + " showed " + l.In.Pressure(r.Gauge) + " at " + l.In.Temperature(r.Temperature) + " " + temperatureWords[r.TemperatureFrom] +
+		corrected + ", known to +/-" + l.In.Pressure(v.U) + " (k = 2); the limits are " + l.In.Pressure(v.Low) + " to " + l.In.Pressure(v.High) + ": " + because +
 		"; the chance that it is in limits is " + percent(v.Conformance) + "."
 }
 

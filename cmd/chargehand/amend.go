@@ -60,7 +60,7 @@ func newCorrect() *cobra.Command {
 			w := cmd.OutOrStdout()
 			fmt.Fprintf(w, "was         %s\nbecomes     %s\n", inWords(it.Body), inWords(body))
 			if j, err := verdict.Judge(m, id, body); err == nil {
-				fmt.Fprintf(w, "verdict     %s\n", verdictFacts(&ledger.Unit{Ref: j.Unit}, j).line(unitsOf(m)))
+				fmt.Fprintf(w, "verdict     %s\n", verdictFacts(&ledger.Unit{Ref: j.Unit}, j).line(verdict.UnitsOf(m)))
 			}
 			for _, c := range it.Countersigned {
 				fmt.Fprintf(w, "note        the countersign by %s was for what it said before, and falls\n", handName(m, m.Item(c).Key()))

@@ -55,7 +55,7 @@ func newBoard() *cobra.Command {
 			return err
 		}
 		defer func() { err = errors.Join(err, b.Close()) }()
-		rows, in := board(b.Meaning()), unitsOf(b.Meaning())
+		rows, in := board(b.Meaning()), verdict.UnitsOf(b.Meaning())
 		if asJSON {
 			return writeJSON(cmd.OutOrStdout(), rows)
 		}
@@ -67,7 +67,7 @@ func newBoard() *cobra.Command {
 				where = r.Aircraft + ", " + r.Position
 			}
 			if r.CorrectedPsi != 0 {
-				corrected, limits = in.pressure(r.judged.Corrected), in.between(r.judged.Low, r.judged.High)
+				corrected, limits = in.Pressure(r.judged.Corrected), in.Between(r.judged.Low, r.judged.High)
 			}
 			fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\t%s\t%.8s\t%s\n", r.Verdict, r.Unit, where, corrected, limits, r.Read, r.Entry, r.Next)
 		}

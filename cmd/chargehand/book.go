@@ -13,6 +13,7 @@ import (
 
 	"example.org/chargehand/ledger"
 	"example.org/chargehand/ledger/record"
+	"example.org/chargehand/ledger/verdict"
 )
 
 func newBook() *cobra.Command {
@@ -115,9 +116,9 @@ func newBookShow() *cobra.Command {
 					aside++
 				}
 			}
-			in := unitsOf(m)
+			in := verdict.UnitsOf(m)
 			return writeJSON(cmd.OutOrStdout(), bookJSON{m.Founding.Title, m.Founding.Name, m.Book.String(), len(m.Entries), aside, len(m.Frontier()), len(m.Units), len(m.Gauges), len(m.Sheets), len(m.Hands),
-				in.p, in.t, fmt.Sprintf("%x", m.Fingerprint()), dir})
+				in.P, in.T, fmt.Sprintf("%x", m.Fingerprint()), dir})
 		})
 	}
 	return cmd

@@ -113,7 +113,7 @@ func (o *judging) run(cmd *cobra.Command, args []string, kind record.Kind, f for
 			printFound(w, m, ch)
 		}
 		facts := verdictFacts(u, j)
-		facts.print(w, unitsOf(m), o.budget)
+		facts.print(w, verdict.UnitsOf(m), o.budget)
 		if !o.unsigned {
 			v, err := o.home.sign(cmd, w, b, dir, ledger.Draft{Kind: kind, Body: body, Shown: shown(j)})
 			if err != nil {
@@ -139,7 +139,7 @@ func printFound(w io.Writer, m *ledger.Meaning, c record.Charge) {
 	j, err := verdict.Judge(m, record.ID{}, record.Reading{Unit: c.Unit, Gauge: c.Gauge, Pressure: f.Pressure, Temperature: f.Temperature, TemperatureFrom: f.TemperatureFrom, SoakMin: f.SoakMin,
 		Ambient: c.Ambient, Relieved: c.Relieved, FluidPressure: c.FluidPressure, Done: c.Done})
 	if err == nil {
-		fmt.Fprintf(w, "as found    %s\n", verdictFacts(&ledger.Unit{Ref: c.Unit}, j).line(unitsOf(m)))
+		fmt.Fprintf(w, "as found    %s\n", verdictFacts(&ledger.Unit{Ref: c.Unit}, j).line(verdict.UnitsOf(m)))
 	}
 	fmt.Fprintln(w, "as left:")
 }
@@ -194,11 +194,11 @@ func verdictFacts(u *ledger.Unit, j verdict.Judged) verdictJSON {
 	return v
 }
 
-func (v verdictJSON) print(w io.Writer, in units, budget bool) {
+func (v verdictJSON) print(w io.Writer, in calc.Units, budget bool) {
 	j := v.judged
 	fmt.Fprintf(w, "unit        %s%s\nverdict     %s\n", v.Unit, v.fitted, strings.ToUpper(v.Verdict))
 	if j.Class != calc.NotAssessable {
-		fmt.Fprintf(w, "corrected   %s, limits %s, known to +/-%s (k = 2)\n", in.pressure(j.Corrected), in.between(j.Low, j.High), in.pressure(j.U))
+		fmt.Fprintf(w, "corrected   %s, limits %s, known to +/-%s (k = 2)\n", in.Pressure(j.Corrected), in.Between(j.Low, j.High), in.Pressure(j.U))
 		fmt.Fprintf(w, "in words    %s\n", v.Sentence)
 	}
 	for _, r := range v.Reasons {
@@ -210,16 +210,16 @@ func (v verdictJSON) print(w io.Writer, in units, budget bool) {
 	}
 	if budget {
 		for _, t := range j.Budget {
-			fmt.Fprintf(w, "budget      %-8s %s: %s\n", in.pressure(t.U), t.Name, t.Stated)
+			fmt.Fprintf(w, "budget      %-8s %s: %s\n", in.Pressure(t.U), t.Name, t.Stated)
 		}
 	}
 }
 
 // line is the verdict in one line.
-func (v verdictJSON) line(in units) string {
+func (v verdictJSON) line(in calc.Units) string {
 	j := v.judged
 	if j.Class == calc.NotAssessable {
 		return "not assessable: " + strings.Join(v.Reasons, "; ")
 	}
-	return fmt.Sprintf("%s: %s, limits %s, +/-%s", v.Verdict, in.pressure(j.Corrected), in.between(j.Low, j.High), in.pressure(j.U))
+	return fmt.Sprintf("%s: %s, limits %s, +/-%s", v.Verdict, in.Pressure(j.Corrected), in.Between(j.Low, j.High), in.Pressure(j.U))
 }

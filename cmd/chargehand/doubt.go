@@ -31,7 +31,7 @@ func doubts(m *ledger.Meaning, u *ledger.Unit, on string, body any, j verdict.Ju
 		}
 		return fmt.Sprintf("unit %s is %s in this book, and you stand at %q", unitName(u.Ref), where, on)
 	}
-	in := unitsOf(m)
+	in := verdict.UnitsOf(m)
 	done, _ := ledger.Done(body)
 	for _, o := range observed(body) {
 		t, err := written(o.Temperature).Temperature()
@@ -46,7 +46,7 @@ func doubts(m *ledger.Meaning, u *ledger.Unit, on string, body any, j verdict.Ju
 			return fmt.Sprintf("a temperature of %s belongs to no field; perhaps another unit was meant", written(o.Temperature))
 		}
 		if last, at, ok := lastTemperature(m, o.TemperatureFrom, done); ok && math.Abs(float64(t-last)) > farFromField {
-			return fmt.Sprintf("a temperature of %s is far from the %s taken at this field at %s; perhaps another unit was meant", written(o.Temperature), in.temperature(last), clock(at))
+			return fmt.Sprintf("a temperature of %s is far from the %s taken at this field at %s; perhaps another unit was meant", written(o.Temperature), in.Temperature(last), clock(at))
 		}
 	}
 	if c, ok := body.(record.Charge); ok {
@@ -67,7 +67,7 @@ func doubts(m *ledger.Meaning, u *ledger.Unit, on string, body any, j verdict.Ju
 	}
 	// A chart's pressures hold at the reading's own temperature, so both are taken against their targets.
 	if x := float64(j.Corrected / j.Target * last.Target / last.Corrected); math.Abs(x-1) > farFromHistory {
-		return fmt.Sprintf("the corrected pressure of %s is far from the %s of this unit's last entry", in.pressure(j.Corrected), in.pressure(last.Corrected))
+		return fmt.Sprintf("the corrected pressure of %s is far from the %s of this unit's last entry", in.Pressure(j.Corrected), in.Pressure(last.Corrected))
 	}
 	return ""
 }

@@ -89,9 +89,9 @@ func newSheetAdd() *cobra.Command {
 		if err != nil || len(s.misfits) == 0 || confirmed {
 			return b, err
 		}
-		in := unitsOf(m)
+		in := verdict.UnitsOf(m)
 		for _, r := range s.misfits {
-			fmt.Fprintf(cmd.ErrOrStderr(), "look again  the row at %s says %s; the other rows' gas would show %s there\n", in.temperature(r.Row.Temperature), in.pressure(r.Row.Charge), in.pressure(r.Expected))
+			fmt.Fprintf(cmd.ErrOrStderr(), "look again  the row at %s says %s; the other rows' gas would show %s there\n", in.Temperature(r.Row.Temperature), in.Pressure(r.Row.Charge), in.Pressure(r.Expected))
 		}
 		if terminal(cmd) == nil {
 			return nil, usageError(fmt.Sprintf("--chart %q: %d rows do not fit the others", s.chart, len(s.misfits)), "Compare them with the manual; if they are as printed, say so with --odd-rows-confirmed")
@@ -151,7 +151,7 @@ func newSheetShow() *cobra.Command {
 				return writeJSON(cmd.OutOrStdout(), sheets)
 			}
 			for _, s := range sheets {
-				s.print(cmd.OutOrStdout(), unitsOf(m))
+				s.print(cmd.OutOrStdout(), verdict.UnitsOf(m))
 			}
 			return nil
 		})
@@ -165,7 +165,7 @@ func sheetFacts(m *ledger.Meaning, s *ledger.Sheet) sheetJSON {
 		SignedBy: handName(m, m.Item(s.ID).Key()), written: s.Sheet}
 	in := m.SheetAt(s.Part, now)
 	j.InForce = in != nil && in.ID == s.ID
-	if j.limits, j.unusable = verdict.Limits(s.Sheet); j.unusable != nil {
+	if j.limits, j.unusable = verdict.Limits(s.Sheet, verdict.UnitsOf(m)); j.unusable != nil {
 		return j
 	}
 	l := j.limits
@@ -180,7 +180,7 @@ func sheetFacts(m *ledger.Meaning, s *ledger.Sheet) sheetJSON {
 	return j
 }
 
-func (s sheetJSON) print(w io.Writer, in units) {
+func (s sheetJSON) print(w io.Writer, in calc.Units) {
 	state := "not in force"
 	if s.InForce {
 		state = "in force"
@@ -192,11 +192,11 @@ func (s sheetJSON) print(w io.Writer, in units) {
 	}
 	l := s.limits
 	if l.Chart == nil {
-		fmt.Fprintf(w, "limits      %s, target %s, at %s\n", in.between(l.Charge-l.Minus, l.Charge+l.Plus), in.pressure(l.Charge), in.temperature(l.Reference))
+		fmt.Fprintf(w, "limits      %s, target %s, at %s\n", in.Between(l.Charge-l.Minus, l.Charge+l.Plus), in.Pressure(l.Charge), in.Temperature(l.Reference))
 	}
 	if l.Chart != nil {
 		for _, r := range l.Chart.Rows() {
-			fmt.Fprintf(w, "at %-8s %s, target %s\n", in.temperature(r.Temperature), in.between(r.Low, r.High), in.pressure(r.Charge))
+			fmt.Fprintf(w, "at %-8s %s, target %s\n", in.Temperature(r.Temperature), in.Between(r.Low, r.High), in.Pressure(r.Charge))
 		}
 	}
 	fmt.Fprintf(w, "gas         %s\n", s.Gas)
@@ -346,14 +346,14 @@ func newUnitShow() *cobra.Command {
 			w := cmd.OutOrStdout()
 			fmt.Fprintf(w, "unit        %s%s\n", j.Unit, fitted(u))
 			if j.Sheet != nil {
-				j.Sheet.print(w, unitsOf(m))
+				j.Sheet.print(w, verdict.UnitsOf(m))
 			} else {
 				fmt.Fprintf(w, "sheet       none in force for part %s\n", u.Ref.Part)
 			}
 			for _, e := range j.History {
 				fmt.Fprintf(w, "\n%s  %s, entry %.8s, %s\n            %s\n", e.At, e.Kind, e.Entry, e.By, e.What)
 				if e.Verdict != nil {
-					fmt.Fprintf(w, "            %s\n", e.Verdict.line(unitsOf(m)))
+					fmt.Fprintf(w, "            %s\n", e.Verdict.line(verdict.UnitsOf(m)))
 				}
 				if e.Standing != "counts" {
 					fmt.Fprintf(w, "            does not count: %s\n", e.Standing)

@@ -310,7 +310,7 @@ func (s *sheetForm) load(body any) error {
 	return nil
 }
 
-func (s *sheetForm) body(*ledger.Meaning) (any, error) {
+func (s *sheetForm) body(m *ledger.Meaning) (any, error) {
 	b := s.s
 	b.ReferenceTemperature, b.Effective = *s.at.amount(), s.effective.record()
 	b.Charge, b.Minus, b.Plus = s.charge.amount(), s.minus.amount(), s.plus.amount()
@@ -327,7 +327,7 @@ func (s *sheetForm) body(*ledger.Meaning) (any, error) {
 	if len(b.Chart) > 0 && b.Charge != nil {
 		return nil, usageError("a sheet has a chart or a reference charge, not both", "Give --chart, or --charge with --minus and --plus, as the manual does")
 	}
-	l, err := verdict.Limits(b)
+	l, err := verdict.Limits(b, verdict.UnitsOf(m))
 	if err != nil {
 		return nil, usageError("the sheet cannot be used: "+err.Error(), "Compare it with the manual and enter it again")
 	}

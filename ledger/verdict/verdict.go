@@ -41,7 +41,7 @@ func Judge(m *ledger.Meaning, id record.ID, body any) (Judged, error) {
 		j.Verdict = notAssessable(fmt.Sprintf("no sheet for part %s was in force at the time of the work", o.unit.Part))
 		return j, nil
 	}
-	limits, err := Limits(j.Sheet.Sheet)
+	limits, err := Limits(j.Sheet.Sheet, UnitsOf(m))
 	if err != nil {
 		j.Verdict = notAssessable(fmt.Sprintf("sheet %s rev %s cannot be used: %v", j.Sheet.Document, j.Sheet.Revision, err))
 		return j, nil
@@ -105,14 +105,19 @@ func (o observation) reading() (calc.Reading, error) {
 	return r, p.err
 }
 
-// Limits returns the approved data of a sheet as the core takes them.
-func Limits(s record.Sheet) (calc.Limits, error) {
+// UnitsOf returns the book's own units, which the words of its verdicts use.
+func UnitsOf(m *ledger.Meaning) calc.Units {
+	return calc.Units{P: m.Founding.PressureUnit, T: m.Founding.TemperatureUnit}
+}
+
+// Limits returns the approved data of a sheet as the core takes them; in is for the words.
+func Limits(s record.Sheet, in calc.Units) (calc.Limits, error) {
 	var p parser
 	model, err := gas.ByName(s.Gas)
 	if err != nil {
 		return calc.Limits{}, err
 	}
-	l := calc.Limits{Gas: model, Ambient: quantity.StandardAtmosphere, Reference: p.temperature("reference temperature", s.ReferenceTemperature)}
+	l := calc.Limits{In: in, Gas: model, Ambient: quantity.StandardAtmosphere, Reference: p.temperature("reference temperature", s.ReferenceTemperature)}
 	if s.Ambient != nil {
 		l.Ambient = p.absolute("reference ambient pressure", *s.Ambient)
 	}
@@ -141,7 +146,7 @@ func Limits(s record.Sheet) (calc.Limits, error) {
 		if p.err != nil {
 			return calc.Limits{}, p.err
 		}
-		if l.Chart, err = calc.NewChart(rows); err != nil {
+		if l.Chart, err = calc.NewChart(in, rows); err != nil {
 			return calc.Limits{}, err
 		}
 	}
