@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"slices"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -33,6 +34,11 @@ func terminal(cmd *cobra.Command) *os.File {
 		return in
 	}
 	return nil
+}
+
+// missing tells whether fill has anything to ask.
+func missing(cmd *cobra.Command, wants []want) bool {
+	return slices.ContainsFunc(wants, func(w want) bool { return !cmd.Flags().Changed(w.flag) })
 }
 
 // fill asks for the wants that were not given, each until the answer is one. Without a terminal it names the first that is

@@ -48,7 +48,7 @@ func newCheck() *cobra.Command {
 	f.flags(cmd.Flags())
 	o.flags(cmd)
 	cmd.RunE = func(cmd *cobra.Command, args []string) error {
-		return o.run(cmd, args, record.KindReading, f, &f.circumstances)
+		return o.run(cmd, args, record.KindReading, f, &f.circumstances, beforeReading)
 	}
 	return cmd
 }
@@ -62,13 +62,13 @@ func newCharge() *cobra.Command {
 	f.flags(cmd.Flags())
 	o.flags(cmd)
 	cmd.RunE = func(cmd *cobra.Command, args []string) error {
-		return o.run(cmd, args, record.KindCharge, f, &f.circumstances)
+		return o.run(cmd, args, record.KindCharge, f, &f.circumstances, beforeCharging)
 	}
 	return cmd
 }
 
 // run shows the verdict on what the form holds, asks about what looks wrong, and signs.
-func (o *judging) run(cmd *cobra.Command, args []string, kind record.Kind, f form, c *circumstances) error {
+func (o *judging) run(cmd *cobra.Command, args []string, kind record.Kind, f form, c *circumstances, caution string) error {
 	return o.home.with(cmd, func(b *ledger.Book, dir string) error {
 		m := b.Meaning()
 		u, err := pickUnit(cmd, m, args)
@@ -76,6 +76,9 @@ func (o *judging) run(cmd *cobra.Command, args []string, kind record.Kind, f for
 			return err
 		}
 		c.unit = unitName(u.Ref)
+		if terminal(cmd) != nil && missing(cmd, f.wants(m)) {
+			fmt.Fprintln(cmd.ErrOrStderr(), caution)
+		}
 		if err := fill(cmd, m, f.wants(m)...); err != nil {
 			return err
 		}

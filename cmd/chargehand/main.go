@@ -72,24 +72,24 @@ func newRoot() *cobra.Command {
 		RunE: func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
 	}
 	root.SetFlagErrorFunc(flagError)
-	root.AddCommand(
-		newBook(),
-		newHand(),
-		newSheet(),
-		newUnit(),
-		newGauge(),
-		newCheck(),
-		newCharge(),
-		newCountersign(),
-		newCorrect(),
-		newWithdraw(),
-		newBoard(),
-		newMeet(),
-		newAudit(),
-		newConvert(),
-		newProve(),
-		newVersion(),
-	)
+	for _, g := range []struct {
+		title    string
+		commands []*cobra.Command
+	}{
+		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newBoard()}},
+		{"What was signed", []*cobra.Command{newCountersign(), newCorrect(), newWithdraw(), newAudit()}},
+		{"The book and its laptops", []*cobra.Command{newBook(), newHand(), newMeet()}},
+		{"Equipment", []*cobra.Command{newUnit(), newGauge(), newSheet()}},
+		{"Without a book", []*cobra.Command{newConvert(), newProve(), newVersion()}},
+	} {
+		root.AddGroup(&cobra.Group{ID: g.title, Title: g.title + ":"})
+		for _, c := range g.commands {
+			c.GroupID = g.title
+			root.AddCommand(c)
+		}
+	}
+	root.SetHelpCommandGroupID("Without a book")
+	root.SetCompletionCommandGroupID("Without a book")
 	return root
 }
 
