@@ -203,7 +203,7 @@ func (s sheetJSON) print(w io.Writer, in calc.Units) {
 	for _, x := range []struct {
 		name string
 		a    *record.Amount
-	}{{"system", s.written.SystemPressure}, {"useful to", s.written.LeastUseful}, {"gas volume", s.written.GasVolume}, {"application", s.written.Application}, {"valve class", s.written.ValveRating},
+	}{{"system", s.written.SystemPressure}, {"useful to", s.written.LeastUseful}, {"gas volume", s.written.GasVolume}, {"application", s.written.Application}, {"leak up to", s.written.Leak}, {"valve class", s.written.ValveRating},
 		{"from", s.written.TempLow}, {"up to", s.written.TempHigh}} {
 		if x.a != nil {
 			fmt.Fprintf(w, "%-11s %s\n", x.name, written(*x.a))
@@ -479,6 +479,8 @@ func inWords(body any) string {
 			limits = fmt.Sprintf("%s, -%s +%s at %s", written(*b.Charge), written(*b.Minus), written(*b.Plus), written(b.ReferenceTemperature))
 		}
 		return fmt.Sprintf("%s rev %s for %s: %s", b.Document, b.Revision, b.Part, limits)
+	case record.Bottle:
+		return fmt.Sprintf("bottle %s, %s of %s at %s and %s", b.Name, written(b.Volume), b.Gas, written(b.Pressure), written(b.Temperature))
 	case record.Gauge:
 		return fmt.Sprintf("gauge %s, 0 to %s, %s, divisions of %s, calibrated %s, due %s", b.Asset, written(b.Span), b.Accuracy, written(b.Graduation), day(b.Calibrated), day(b.Due))
 	}
@@ -539,6 +541,62 @@ func newGaugeList() *cobra.Command {
 			}
 			if asJSON {
 				return writeJSON(cmd.OutOrStdout(), gauges)
+			}
+			return w.Flush()
+		})
+	}
+	return cmd
+}
+
+func newBottle() *cobra.Command {
+	return group("bottle", "Gas bottles on the cart", newBottleAdd(), newBottleList())
+}
+
+func newBottleAdd() *cobra.Command {
+	var h home
+	f := newBottleForm()
+	cmd := &cobra.Command{Use: "add", Short: "Make a bottle known, or enter what it holds now", Args: usageArgs(cobra.NoArgs),
+		Example: "  chargehand bottle add --name N2-3 --volume 50L --pressure 2400psi --temperature 41F --label \"nitrogen, technical\"",
+		Long:    "Make a bottle known, or enter what it holds now: the newest reading of a name counts. Read the label, not the colour."}
+	f.flags(cmd.Flags())
+	return signing(cmd, &h, record.KindBottle, func(m *ledger.Meaning, _ []string) (any, error) {
+		if err := fill(cmd, m, f.wants(m)...); err != nil {
+			return nil, err
+		}
+		return f.body(m)
+	})
+}
+
+type bottleJSON struct {
+	Name         string  `json:"name"`
+	Gas          string  `json:"gas"`
+	VolumeL      float64 `json:"volume_l"`
+	PressurePsi  float64 `json:"pressure_psi"`
+	TemperatureF float64 `json:"temperature_f"`
+	Read         string  `json:"read"`
+	Label        string  `json:"label,omitempty"`
+	Entry        string  `json:"entry"`
+}
+
+func newBottleList() *cobra.Command {
+	var h home
+	var asJSON bool
+	cmd := &cobra.Command{Use: "list", Short: "List the bottles and what each held when it was last read", Args: usageArgs(cobra.NoArgs)}
+	addHome(cmd, &h, false)
+	addJSON(cmd, &asJSON)
+	cmd.RunE = func(cmd *cobra.Command, _ []string) error {
+		return h.with(cmd, func(b *ledger.Book, _ string) error {
+			bottles := []bottleJSON{}
+			w := tabwriter.NewWriter(cmd.OutOrStdout(), 0, 0, 2, ' ', 0)
+			fmt.Fprintln(w, "BOTTLE\tGAS\tVOLUME\tPRESSURE\tAT\tREAD\tLABEL")
+			for _, x := range b.Meaning().Bottles {
+				v, _ := written(x.Volume).Volume()
+				t, _ := written(x.Temperature).Temperature()
+				bottles = append(bottles, bottleJSON{x.Name, x.Gas, show(v.InUnit("L")), amountPsi(x.Pressure), inF(t), clock(x.Read), x.Label, x.ID.String()})
+				fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\t%s\t%s\n", x.Name, x.Gas, written(x.Volume), written(x.Pressure), written(x.Temperature), clock(x.Read), x.Label)
+			}
+			if asJSON {
+				return writeJSON(cmd.OutOrStdout(), bottles)
 			}
 			return w.Flush()
 		})

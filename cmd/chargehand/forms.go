@@ -33,6 +33,8 @@ func formFor(k record.Kind) form {
 		return newSheetForm()
 	case record.KindGauge:
 		return newGaugeForm()
+	case record.KindBottle:
+		return newBottleForm()
 	case record.KindUnitFitted:
 		return &fittedForm{}
 	case record.KindUnitRemoved:
@@ -253,12 +255,13 @@ type sheetForm struct {
 	at, low, high                               *typed[quantity.Temperature]
 	ambient                                     *typed[quantity.Pressure]
 	volume, volumeTolerance, application        *typed[quantity.Volume]
+	leak                                        *typed[float64]
 	misfits                                     []calc.Misfit
 }
 
 func newSheetForm() *sheetForm {
 	return &sheetForm{charge: bookPressure(), minus: bookPressure(), plus: bookPressure(), system: bookPressure(), rating: bookPressure(), useful: bookPressure(),
-		at: bookTemperature(), low: bookTemperature(), high: bookTemperature(), ambient: absolutePressure(), volume: volume(), volumeTolerance: volume(), application: volume()}
+		at: bookTemperature(), low: bookTemperature(), high: bookTemperature(), ambient: absolutePressure(), volume: volume(), volumeTolerance: volume(), application: volume(), leak: leakRate()}
 }
 
 func (s *sheetForm) flags(f *pflag.FlagSet) {
@@ -276,6 +279,7 @@ func (s *sheetForm) flags(f *pflag.FlagSet) {
 	f.Var(s.volume, "gas-volume", "gas volume with the fluid side empty")
 	f.Var(s.volumeTolerance, "gas-volume-tolerance", "tolerance of the gas volume")
 	f.Var(s.application, "application", "fluid that one application takes")
+	f.Var(s.leak, "leak", "loss of gas that the manual allows, as free gas or as pressure")
 	f.StringVar(&s.s.Valve, "valve", "", "charging valve, such as MS28889-2")
 	f.Var(s.rating, "valve-rating", "pressure class of the charging valve")
 	f.StringVar(&s.s.Torque, "torque", "", "torques as the manual gives them")
@@ -301,7 +305,7 @@ func (s *sheetForm) load(body any) error {
 	for _, err := range []error{
 		s.charge.load(s.s.Charge), s.minus.load(s.s.Minus), s.plus.load(s.s.Plus), s.system.load(s.s.SystemPressure), s.rating.load(s.s.ValveRating), s.useful.load(s.s.LeastUseful),
 		s.at.load(&s.s.ReferenceTemperature), s.low.load(s.s.TempLow), s.high.load(s.s.TempHigh), s.ambient.load(s.s.Ambient),
-		s.volume.load(s.s.GasVolume), s.volumeTolerance.load(s.s.GasVolumeTolerance), s.application.load(s.s.Application),
+		s.volume.load(s.s.GasVolume), s.volumeTolerance.load(s.s.GasVolumeTolerance), s.application.load(s.s.Application), s.leak.load(s.s.Leak),
 	} {
 		if err != nil {
 			return err
@@ -317,6 +321,7 @@ func (s *sheetForm) body(m *ledger.Meaning) (any, error) {
 	b.SystemPressure, b.ValveRating, b.LeastUseful = s.system.amount(), s.rating.amount(), s.useful.amount()
 	b.TempLow, b.TempHigh, b.Ambient = s.low.amount(), s.high.amount(), s.ambient.amount()
 	b.GasVolume, b.GasVolumeTolerance, b.Application = s.volume.amount(), s.volumeTolerance.amount(), s.application.amount()
+	b.Leak = s.leak.amount()
 	if s.chart != "" {
 		rows, err := readChart(s.chart)
 		if err != nil {
@@ -391,6 +396,58 @@ func endOfDay(s stamp) record.Time {
 	t := s.at
 	s.at = time.Date(t.Year(), t.Month(), t.Day(), 23, 59, 59, 0, t.Location())
 	return s.record()
+}
+
+type bottleForm struct {
+	b                record.Bottle
+	read             stamp
+	volume           *typed[quantity.Volume]
+	pressure, rating *typed[quantity.GaugePressure]
+	temperature      *typed[quantity.Temperature]
+}
+
+func newBottleForm() *bottleForm {
+	return &bottleForm{volume: volume(), pressure: bookPressure(), rating: bookPressure(), temperature: bookTemperature()}
+}
+
+func (b *bottleForm) flags(f *pflag.FlagSet) {
+	f.StringVar(&b.b.Name, "name", "", "what the bottle is called")
+	f.Var(b.volume, "volume", "its water volume, as stamped")
+	f.StringVar(&b.b.Gas, "gas", "nitrogen", "what the label says is in it")
+	f.Var(b.pressure, "pressure", "what its gauge shows")
+	f.Var(b.temperature, "temperature", "its temperature then")
+	f.Var(&b.read, "read", "when it was read (else now)")
+	f.Var(b.rating, "rating", "its working pressure, as stamped")
+	f.StringVar(&b.b.Label, "label", "", "the words of the label; a colour says nothing")
+	f.StringVar(&b.b.Note, "note", "", "anything worth keeping")
+}
+
+func (b *bottleForm) wants(*ledger.Meaning) []want {
+	return needs("name", "volume", "pressure", "temperature")
+}
+
+func (b *bottleForm) load(body any) error {
+	b.b = body.(record.Bottle)
+	b.read.at = wall(b.b.Read)
+	for _, err := range []error{b.volume.load(&b.b.Volume), b.pressure.load(&b.b.Pressure), b.rating.load(b.b.Rating), b.temperature.load(&b.b.Temperature)} {
+		if err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+func (b *bottleForm) body(m *ledger.Meaning) (any, error) {
+	in := verdict.UnitsOf(m)
+	switch {
+	case b.pressure.value <= 0:
+		return nil, usageError(fmt.Sprintf("--pressure %q: an empty bottle serves nothing", b.pressure), "Give what its gauge shows")
+	case b.rating.written.Unit != "" && b.pressure.value > b.rating.value:
+		return nil, usageError(fmt.Sprintf("--pressure %q is above the bottle's working pressure of %s", b.pressure, in.Pressure(b.rating.value)), "Read both again; do not use a bottle that is over-pressed")
+	}
+	x := b.b
+	x.Volume, x.Pressure, x.Temperature, x.Rating, x.Read = *b.volume.amount(), *b.pressure.amount(), *b.temperature.amount(), b.rating.amount(), b.read.record()
+	return x, nil
 }
 
 type fittedForm struct {

@@ -79,7 +79,7 @@ func newRoot() *cobra.Command {
 		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newBoard()}},
 		{"What was signed", []*cobra.Command{newCountersign(), newCorrect(), newWithdraw(), newAudit()}},
 		{"The book and its laptops", []*cobra.Command{newBook(), newHand(), newMeet()}},
-		{"Equipment", []*cobra.Command{newUnit(), newGauge(), newSheet()}},
+		{"Equipment", []*cobra.Command{newUnit(), newGauge(), newSheet(), newBottle()}},
 		{"Without a book", []*cobra.Command{newConvert(), newProve(), newVersion()}},
 	} {
 		root.AddGroup(&cobra.Group{ID: g.title, Title: g.title + ":"})
