@@ -30,39 +30,29 @@ func Judge(m *ledger.Meaning, id record.ID, body any) (Judged, error) {
 	var o observation
 	switch b := body.(type) {
 	case record.Reading:
-		o = observation{b.Unit, b.Gauge, b.Pressure, b.Temperature, b.TemperatureFrom, b.SoakMin, b.Ambient, b.Relieved, b.FluidPressure, b.Done}
+		o = ofReading(b)
 	case record.Charge:
-		o = observation{b.Unit, b.Gauge, b.AsLeft.Pressure, b.AsLeft.Temperature, b.AsLeft.TemperatureFrom, b.AsLeft.SoakMin, b.Ambient, b.Relieved, b.FluidPressure, b.Done}
+		o = ofCharge(b, b.AsLeft)
 	default:
 		return Judged{}, fmt.Errorf("a %T has no verdict", body)
 	}
-	j := Judged{Entry: id, Unit: o.unit, Sheet: m.SheetAt(o.unit.Part, o.done)}
-	if j.Sheet == nil {
-		j.Verdict = notAssessable(fmt.Sprintf("no sheet for part %s was in force at the time of the work", o.unit.Part))
-		return j, nil
-	}
-	limits, err := Limits(j.Sheet.Sheet, UnitsOf(m))
-	if err != nil {
-		j.Verdict = notAssessable(fmt.Sprintf("sheet %s rev %s cannot be used: %v", j.Sheet.Document, j.Sheet.Revision, err))
-		return j, nil
-	}
-	g := m.Gauge(o.gauge)
-	if g == nil {
-		j.Verdict = notAssessable(fmt.Sprintf("gauge %s is not registered", o.gauge))
-		return j, nil
-	}
-	gauge, err := gaugeOf(g.Gauge, o.done)
-	if err != nil {
-		j.Verdict = notAssessable(fmt.Sprintf("gauge %s cannot be used: %v", o.gauge, err))
-		return j, nil
-	}
-	r, err := o.reading()
+	var x Observed
+	err := x.resolve(m, o)
+	j := Judged{Entry: id, Unit: o.unit, Sheet: x.Sheet}
 	if err != nil {
 		j.Verdict = notAssessable(err.Error())
-		return j, nil
+	} else {
+		j.Verdict = calc.Judge(x.Limits, x.Gauge, x.Reading, calc.GuardBanded())
 	}
-	j.Verdict = calc.Judge(limits, gauge, r, calc.GuardBanded())
 	return j, nil
+}
+
+func ofReading(b record.Reading) observation {
+	return observation{b.Unit, b.Gauge, b.Pressure, b.Temperature, b.TemperatureFrom, b.SoakMin, b.Ambient, b.Relieved, b.FluidPressure, b.Done}
+}
+
+func ofCharge(b record.Charge, o record.Observation) observation {
+	return observation{b.Unit, b.Gauge, o.Pressure, o.Temperature, o.TemperatureFrom, o.SoakMin, b.Ambient, b.Relieved, b.FluidPressure, b.Done}
 }
 
 func notAssessable(reason string) calc.Verdict {
