@@ -1,6 +1,7 @@
 package calc
 
 import (
+	"cmp"
 	"errors"
 	"fmt"
 	"math"
@@ -57,7 +58,7 @@ func (c *Chart) At(t quantity.Temperature) (low, charge, high quantity.GaugePres
 	}
 	first, last := c.rows[0], c.rows[len(c.rows)-1]
 	if !(t >= first.Temperature && t <= last.Temperature) {
-		name := c.in.T
+		name := cmp.Or(c.in.T, "F")
 		if _, err := t.InUnit(name); err != nil {
 			name = "F"
 		}

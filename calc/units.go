@@ -1,6 +1,7 @@
 package calc
 
 import (
+	"cmp"
 	"math"
 	"strconv"
 	"strings"
@@ -15,7 +16,7 @@ type Units struct{ P, T string }
 // Pressure writes a gauge pressure: whole psi and kPa, tenths of a bar, hundredths of a MPa. Below 20 of a unit that is
 // written whole a figure that is not whole keeps a tenth.
 func (u Units) Pressure(g quantity.GaugePressure) string {
-	name := u.P
+	name := cmp.Or(u.P, "psi")
 	v, err := g.InUnit(name)
 	if err != nil {
 		name = "psi"
@@ -43,7 +44,7 @@ func (u Units) Between(low, high quantity.GaugePressure) string {
 
 // Temperature writes a temperature in whole degrees.
 func (u Units) Temperature(t quantity.Temperature) string {
-	name := u.T
+	name := cmp.Or(u.T, "F")
 	v, err := t.InUnit(name)
 	if err != nil {
 		name = "F"
