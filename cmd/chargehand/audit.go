@@ -95,7 +95,7 @@ func outside(founding, fingerprint string) (told audit.Outside, err error) {
 
 // unaudited gives an error the status of an audit that was not made.
 func unaudited(err error) error {
-	p := &problem{what: err.Error(), todo: "Put right what is named there and audit again", cause: err}
+	p := &problem{what: plainly(err).Error(), todo: "Put right what is named there and audit again", cause: err}
 	if q := (*problem)(nil); errors.As(err, &q) {
 		p.what, p.todo = q.what, q.todo
 	}
@@ -110,7 +110,7 @@ func inspect(h *home, orEntries bool) (*ledger.Meaning, []audit.Unreadable, erro
 		if err != nil || !info.IsDir() {
 			return nil, nil, couldNot(fmt.Errorf("there is no folder %q", h.dir), "Name the folder of a book, or one that 'chargehand book copy' made")
 		}
-		if _, err := os.Stat(filepath.Join(h.dir, "store")); errors.Is(err, fs.ErrNotExist) {
+		if !holds(h.dir, "store") && !holds(h.dir, "key") {
 			return inspectEntries(h.dir)
 		}
 	}
@@ -123,7 +123,7 @@ func inspect(h *home, orEntries bool) (*ledger.Meaning, []audit.Unreadable, erro
 	switch {
 	case m != nil:
 		if err != nil {
-			bad = append(bad, audit.Unreadable{Where: "the store", Err: err})
+			bad = append(bad, audit.Unreadable{Err: err})
 		}
 		return m, bad, nil
 	case errors.Is(err, ledger.ErrDamaged):
@@ -132,6 +132,11 @@ func inspect(h *home, orEntries bool) (*ledger.Meaning, []audit.Unreadable, erro
 		return nil, nil, couldNot(fmt.Errorf("the folder %q names a book and has no store", dir), "Restore the folder store from a backup, or audit the copy of another laptop")
 	}
 	return nil, nil, explain(err, dir)
+}
+
+func holds(dir, name string) bool {
+	_, err := os.Stat(filepath.Join(dir, name))
+	return !errors.Is(err, fs.ErrNotExist)
 }
 
 func inspectEntries(dir string) (*ledger.Meaning, []audit.Unreadable, error) {

@@ -40,7 +40,7 @@ type Finding struct {
 
 // Unreadable is bytes that stood where an entry should and did not verify.
 type Unreadable struct {
-	Where string
+	Where string // "" for the whole store
 	Err   error
 }
 
@@ -97,7 +97,11 @@ func Run(m *ledger.Meaning, unreadable []Unreadable, told Outside) Report {
 		add(Fault, record.ID{}, "the founding entry is missing: nobody's authority can be shown")
 	}
 	for _, u := range unreadable {
-		add(Fault, record.ID{}, "%s does not verify: %v", u.Where, u.Err)
+		if u.Where == "" {
+			add(Fault, record.ID{}, "%v", u.Err)
+		} else {
+			add(Fault, record.ID{}, "%s does not verify: %v", u.Where, u.Err)
+		}
 	}
 	for i := range m.Entries {
 		entry(m, &m.Entries[i], add)
