@@ -17,7 +17,7 @@ import (
 )
 
 func newBook() *cobra.Command {
-	return group("book", "Start a book, join one, or show this one", newBookStart(), newBookJoin(), newBookShow())
+	return group("book", "Start a book, join one, show or copy this one", newBookStart(), newBookJoin(), newBookShow(), newBookCopy())
 }
 
 func newBookStart() *cobra.Command {

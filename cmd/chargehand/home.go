@@ -60,7 +60,7 @@ func (h *home) id() (record.BookID, string, error) {
 	if errors.Is(err, os.ErrNotExist) {
 		return record.BookID{}, "", couldNot(fmt.Errorf("there is no book in %q", dir), "Start one with 'chargehand book start', or name another folder with --book")
 	} else if err != nil {
-		return record.BookID{}, "", err
+		return record.BookID{}, "", couldNot(fmt.Errorf("the file %q, which names the book, cannot be read: %w", filepath.Join(dir, "book"), plainly(err)), "Restore it from a backup, or see that you may read it")
 	}
 	id, err := record.ParseBookID(strings.TrimSpace(string(data)))
 	if err != nil {
@@ -74,6 +74,9 @@ func (h *home) open() (*ledger.Book, string, error) {
 	id, dir, err := h.id()
 	if err != nil {
 		return nil, "", err
+	}
+	if _, err := os.Stat(filepath.Join(dir, "store")); err != nil { // Open would begin an empty one
+		return nil, "", couldNot(fmt.Errorf("the folder %q names a book and has no store: %w", dir, plainly(err)), "Restore the folder store from a backup, or join again in a new folder")
 	}
 	b, err := ledger.Open(filepath.Join(dir, "store"), id, time.Now)
 	return b, dir, explain(err, dir)

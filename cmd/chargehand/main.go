@@ -6,6 +6,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"io/fs"
 	"os"
 	"os/signal"
 	"strings"
@@ -52,7 +53,7 @@ func run(ctx context.Context, args []string, s streams) int {
 		fmt.Fprintln(s.err, "chargehand:", p)
 		return p.status
 	default:
-		fmt.Fprintln(s.err, "chargehand:", couldNot(err, "Put right what is named there and try again"))
+		fmt.Fprintln(s.err, "chargehand:", couldNot(plainly(err), "Put right what is named there and try again"))
 		return statusNot
 	}
 }
@@ -105,6 +106,20 @@ type problem struct {
 
 func (p *problem) Error() string { return p.what + ". " + p.todo + "." }
 func (p *problem) Unwrap() error { return p.cause }
+
+// plainly says an error of the file system in words: which file, and what it said of it.
+func plainly(err error) error {
+	var p *fs.PathError
+	switch {
+	case !errors.As(err, &p):
+		return err
+	case errors.Is(err, fs.ErrNotExist):
+		return fmt.Errorf("there is no file or folder %q", p.Path)
+	case errors.Is(err, fs.ErrPermission), errors.Is(err, syscall.EROFS):
+		return fmt.Errorf("%q may not be read or written: %w", p.Path, p.Err)
+	}
+	return fmt.Errorf("%q: %w", p.Path, p.Err)
+}
 
 // usageError is a wrong command, flag or value.
 func usageError(what, todo string) error {
