@@ -34,6 +34,9 @@ func newBookStart() *cobra.Command {
 		if err := requireFlags(cmd, "title", "name"); err != nil {
 			return err
 		}
+		if err := refuseUnits(f); err != nil {
+			return err
+		}
 		dir, err := h.folder()
 		if err != nil {
 			return err

@@ -57,6 +57,9 @@ func newSheet() *cobra.Command {
 		if err := requireFlags(cmd, "part", "at", "document", "revision"); err != nil {
 			return nil, err
 		}
+		if err := refuseTolerance(minus, plus); err != nil {
+			return nil, err
+		}
 		s.ReferenceTemperature, s.Effective = amountOf(ref.written), effective.record()
 		s.Charge, s.Minus, s.Plus = optional(charge.written), optional(minus.written), optional(plus.written)
 		s.SystemPressure, s.ValveRating = optional(system.written), optional(rating.written)
@@ -92,13 +95,16 @@ func show(v float64, _ error) float64 { return v }
 func readChart(name string) ([]record.ChartRow, error) {
 	f, err := os.Open(name)
 	if err != nil {
-		return nil, usageError(fmt.Sprintf("--chart %q: %v", name, err), "Name a CSV file")
+		return nil, usageError(fmt.Sprintf("--chart: %v", plainly(err)), "Name a CSV file")
 	}
 	defer f.Close()
 	r := csv.NewReader(io.LimitReader(f, 1<<20))
 	r.FieldsPerRecord, r.TrimLeadingSpace = 4, true
 	lines, err := r.ReadAll()
-	if err != nil || len(lines) < 3 {
+	if err == nil && len(lines) < 3 {
+		err = fmt.Errorf("%d rows", max(len(lines)-1, 0))
+	}
+	if err != nil {
 		return nil, usageError(fmt.Sprintf("--chart %q: not a chart of two rows or more (%v)", name, err), "Write a heading and then rows such as 70F,950psi,1000psi,1050psi")
 	}
 	var rows []record.ChartRow
@@ -191,6 +197,9 @@ func newGauge() *cobra.Command {
 			what, todo, _ := cutHint(err.Error())
 			return nil, usageError("--accuracy: "+what, todo)
 		}
+		if err := refuseDates(&calibrated, &due); err != nil {
+			return nil, err
+		}
 		if span.value <= 0 || division.value <= 0 || division.value > span.value/4 {
 			return nil, usageError(fmt.Sprintf("a span of %s with divisions of %s cannot be", span, division), "Read both off the dial")
 		}
@@ -256,6 +265,9 @@ func newCheck() *cobra.Command {
 				return err
 			}
 			r.Ambient = &record.Amount{Mantissa: int64(p + 0.5), Exponent: -2, Unit: "hPa"}
+		}
+		if err := refuseReading(pressure, m.Gauge(r.Gauge), soak); err != nil {
+			return err
 		}
 		j, err := verdict.Judge(m, record.ID{}, r)
 		if err != nil {
