@@ -43,39 +43,39 @@ func Before(l Limits, g Gauge, at quantity.Temperature, ambient quantity.Pressur
 		}
 	}
 	if len(why) > 0 {
-		return o.notAssessable(append(why, bad...))
+		return o.notAssessable(l.In, append(why, bad...))
 	}
 
 	r.Gauge = o.Target
 	reading := dial.corrected(r.Gauge)
 	if v, why = compare(l, r, reading); len(why) > 0 {
-		return o.notAssessable(append(why, bad...))
+		return o.notAssessable(l.In, append(why, bad...))
 	}
 	v.Budget = budget(l, dial, r, reading, v.at, v.ref)
-	better := v.choose(r, rule, reading, v.roomOnTarget())
-	where := "at " + fahrenheit(at)
+	better := v.choose(l, r, rule, reading, v.roomOnTarget())
+	where := "at " + l.In.Temperature(at)
 	if l.Rated > 0 && o.Target > l.Rated {
-		why = append(why, obstacle{fmt.Sprintf("the charging valve is rated %s, below the %s that the target shows %s", psi(l.Rated), psi(o.Target), where), "do not charge until the unit is cooler"})
+		why = append(why, obstacle{fmt.Sprintf("the charging valve is rated %s, below the %s that the target shows %s", l.In.Pressure(l.Rated), l.In.Pressure(o.Target), where), "do not charge until the unit is cooler"})
 	}
 	if l.looksLikeFluid(o.Target, v.Target) {
-		why = append(why, obstacle{fmt.Sprintf("the target shows %s %s, which agrees with system pressure %s: the dial could not tell gas from fluid", psi(o.Target), where, psi(l.SystemPressure)), "let the unit come to another temperature"})
+		why = append(why, obstacle{fmt.Sprintf("the target shows %s %s, which agrees with system pressure %s: the dial could not tell gas from fluid", l.In.Pressure(o.Target), where, l.In.Pressure(l.SystemPressure)), "let the unit come to another temperature"})
 	}
 	if len(bad) == 0 && !(o.Target >= g.SpanLow && o.Target <= g.Span) {
-		bad = []obstacle{{fmt.Sprintf("the target shows %s %s, outside the span of gauge %s of %s to %s", psi(o.Target), where, g.Name, psi(g.SpanLow), psi(g.Span)), "use a gauge whose span holds the pressure"}}
+		bad = []obstacle{{fmt.Sprintf("the target shows %s %s, outside the span of gauge %s of %s to %s", l.In.Pressure(o.Target), where, g.Name, l.In.Pressure(g.SpanLow), l.In.Pressure(g.Span)), "use a gauge whose span holds the pressure"}}
 	}
 	if why = append(why, bad...); len(why) > 0 {
 		if len(bad) > 0 {
 			o.Better = better
 		}
-		return o.notAssessable(why)
+		return o.notAssessable(l.In, why)
 	}
 
 	u := combined(v.Budget)
 	w := step(rule.guard() * u)
 	o.U = step(2 * u)
 	o.Class = decide(min(v.Target-v.Low, v.High-v.Target), v.High-v.Low, w)
-	shows := fmt.Sprintf("gauge %s should show %s %s, %s to %s", g.Name, psi(o.Target), where, psi(o.Low), psi(o.High))
-	known := "a charge on target would be known to +/-" + psi(o.U) + " (k = 2), and the guard band is " + psi(w)
+	shows := fmt.Sprintf("gauge %s should show %s %s, %s to %s", g.Name, l.In.Pressure(o.Target), where, l.In.Pressure(o.Low), l.In.Pressure(o.High))
+	known := "a charge on target would be known to +/-" + l.In.Pressure(o.U) + " (k = 2), and the guard band is " + l.In.Pressure(w)
 	o.Next = "read: " + shows
 	switch o.Class {
 	case Pass:
@@ -87,10 +87,10 @@ func Before(l Limits, g Gauge, at quantity.Temperature, ambient quantity.Pressur
 		o.Sentence = "This gauge cannot decide: " + shows + "; " + known + ", so no reading could pass."
 	}
 	if o.Better = better; better == nil {
-		o.Next = v.noBetter(r, rule)
+		o.Next = v.noBetter(l, r, rule, v.roomOnTarget())
 		return o
 	}
-	o.Next = "take a better gauge: " + better.named()
+	o.Next = "take a better gauge: " + better.named(l.In)
 	return o
 }
 
@@ -113,13 +113,13 @@ func (g Gauge) outlook(l Limits, v Verdict, at quantity.Temperature, ambient qua
 	return o, nil
 }
 
-func (o Outlook) notAssessable(why []obstacle) Outlook {
+func (o Outlook) notAssessable(in Units, why []obstacle) Outlook {
 	n := notAssessable(why)
 	o.Class, o.Reasons = n.Class, n.Reasons
 	o.Next, _, _ = strings.Cut(n.Next, "; then read again")
 	o.Sentence = "No reading could be judged: " + strings.Join(o.Reasons, "; ") + "."
 	if o.Better != nil {
-		o.Next += "; " + o.Better.named() + " would do"
+		o.Next += "; " + o.Better.named(in) + " would do"
 	}
 	return o
 }

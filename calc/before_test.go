@@ -36,7 +36,7 @@ func TestBeforeTellsTheDial(t *testing.T) {
 	}
 	rows := []ChartRow{{c(0), g(900), g(950), g(1000)}, {c(20), g(1000), g(1050), g(1100)}}
 	l := limits(0, 0)
-	l.Chart, _ = NewChart(rows)
+	l.Chart, _ = NewChart(Units{}, rows)
 	if o := Before(l, dial, c(10), quantity.StandardAtmosphere, GuardBanded()); math.Abs(inPsi(o.Low)-940) > 0.001 || math.Abs(inPsi(o.Target)-990) > 0.001 || math.Abs(inPsi(o.High)-1040) > 0.001 {
 		t.Errorf("between two rows of a chart: %.1f, %.1f, %.1f psi", inPsi(o.Low), inPsi(o.Target), inPsi(o.High))
 	}
@@ -54,7 +54,7 @@ func TestBeforeSaysWhetherTheGaugeCan(t *testing.T) {
 		want         Class
 		better, next string
 	}{
-		{a, 25, 25, 40, NotMeasurable, "", "no better gauge alone would decide: gauge away from 20 C"},
+		{a, 25, 25, 40, NotMeasurable, "", "no better gauge alone would decide: a gauge at 104 F is away from its 20 C"},
 		{a, 40, 40, 40, NotMeasurable, "ASME 2A", "take a better gauge: ASME"},
 		{a, 50, 50, 40, Pass, "", "read: gauge G-7 should show 1628 psi at 104 F, 1573 psi to 1683 psi"},
 		{fine, 25, 25, 20, Pass, "", "read: gauge G-7 should show 1500 psi"},
@@ -96,7 +96,7 @@ func TestBeforeNamesWhatStandsInTheWay(t *testing.T) {
 		{"below the sheet's range", "below the sheet's least", "warm", func(l *Limits, _ *Gauge, _ *quantity.Temperature, _ *quantity.Pressure) { l.TempLow = c(45) }},
 		{"outside the equation", "420 K", "come to a temperature", func(_ *Limits, _ *Gauge, at *quantity.Temperature, _ *quantity.Pressure) { *at = 430 }},
 		{"outside the chart", "outside the chart", "temperature on the chart", func(l *Limits, _ *Gauge, _ *quantity.Temperature, _ *quantity.Pressure) {
-			l.Chart, _ = NewChart([]ChartRow{{c(0), g(900), g(950), g(1000)}, {c(20), g(1000), g(1050), g(1100)}})
+			l.Chart, _ = NewChart(Units{}, []ChartRow{{c(0), g(900), g(950), g(1000)}, {c(20), g(1000), g(1050), g(1100)}})
 		}},
 		{"no gas", "names no gas", "sheet", func(l *Limits, _ *Gauge, _ *quantity.Temperature, _ *quantity.Pressure) { l.Gas = nil }},
 		{"no charge", "neither a chart nor a charge", "sheet", func(l *Limits, _ *Gauge, _ *quantity.Temperature, _ *quantity.Pressure) { l.Charge = 0 }},
@@ -137,7 +137,7 @@ func TestBeforeAgreesWithTheVerdict(t *testing.T) {
 			better := *o.Better
 			better.Name, better.InCalibration = "better", true
 			if again := Before(l, better, at, ambient, GuardBanded()); again.Class != Pass {
-				rt.Errorf("it names %s, and then: %s", o.Better.named(), again.Sentence)
+				rt.Errorf("it names %s, and then: %s", o.Better.named(Units{}), again.Sentence)
 			}
 		}
 	})

@@ -3,7 +3,6 @@ package calc
 import (
 	"fmt"
 	"math"
-	"strconv"
 	"time"
 
 	"example.org/chargehand/calc/gas"
@@ -53,12 +52,12 @@ func budget(l Limits, g Gauge, r Reading, reading quantity.GaugePressure, at, re
 	byT := byP * quantity.GaugePressure(at.DpDT)
 
 	u := g.uncertainty(reading, r.Temperature)
-	class := Term{"gauge, by its class", fmt.Sprintf("%s of %s: +/-%s", g.Accuracy, psi(g.Span-g.SpanLow), psi(g.Accuracy.Limit(reading-g.SpanLow, g.Span-g.SpanLow))), u[0] * byP}
+	class := Term{"gauge, by its class", fmt.Sprintf("%s of %s: +/-%s", g.Accuracy, l.In.Pressure(g.Span-g.SpanLow), l.In.Pressure(g.Accuracy.Limit(reading-g.SpanLow, g.Span-g.SpanLow))), u[0] * byP}
 	if g.certified() {
-		class = Term{"gauge, by its certificate", "U = " + psi(g.CorrectionUncertainty) + " (k = 2)", u[0] * byP}
+		class = Term{"gauge, by its certificate", "U = " + l.In.Pressure(g.CorrectionUncertainty) + " (k = 2)", u[0] * byP}
 	}
 	ts := append(make([]Term, 0, 6), class,
-		Term{"reading the dial", "half of a division of " + psi(g.Graduation), u[1] * byP},
+		Term{"reading the dial", "half of a division of " + l.In.Pressure(g.Graduation), u[1] * byP},
 		Term{"gauge away from 20 C", fmt.Sprintf("%.3g %% of span a kelvin, %.0f K", 100*g.warmth(), math.Abs(float64(r.Temperature-gaugeReference))), u[2] * byP})
 
 	half, stated := probeHalfWidth, "shell probe, +/-1 K"
@@ -113,24 +112,8 @@ func phi(z float64) float64 { return 0.5 * math.Erfc(-z/math.Sqrt2) }
 // Source: JCGM 106:2012, section 7 (formula re-derived).
 func conformance(y, low, high, u float64) float64 { return phi((high-y)/u) - phi((low-y)/u) }
 
-// onePsi keeps the factor in the one table of units.
-var onePsi, _ = quantity.Written{Mantissa: 1, Unit: "psi"}.Gauge()
-
-func psi(g quantity.GaugePressure) string {
-	v, err := g.InUnit("psi")
-	switch {
-	case err != nil || math.IsNaN(v) || math.IsInf(v, 0):
-		return "no pressure"
-	case math.Abs(v) < 20 && math.Abs(v-math.Round(v)) > 0.05:
-		return strconv.FormatFloat(v, 'f', 1, 64) + " psi"
-	}
-	return strconv.FormatFloat(math.Round(v)+0, 'f', 0, 64) + " psi"
-}
-
-func fahrenheit(t quantity.Temperature) string {
-	f, err := t.InUnit("F")
-	if err != nil || math.IsNaN(f) || math.IsInf(f, 0) {
-		return "no temperature"
-	}
-	return strconv.FormatFloat(math.Round(f)+0, 'f', 0, 64) + " F"
-}
+// onePsi and oneBar keep the factors in the one table of units.
+var (
+	onePsi, _ = quantity.Written{Mantissa: 1, Unit: "psi"}.Gauge()
+	oneBar, _ = quantity.Written{Mantissa: 1, Unit: "bar"}.Gauge()
+)

@@ -237,7 +237,7 @@ func TestChart(t *testing.T) {
 	for _, x := range []struct{ c, psi float64 }{{-40, 756.5}, {-20, 838.0}, {0, 919.1}, {20, 1000}, {40, 1080.6}, {60, 1161.0}} {
 		rows = append(rows, ChartRow{c(x.c), g(x.psi - 30), g(x.psi), g(x.psi + 30)})
 	}
-	ch, err := NewChart(rows)
+	ch, err := NewChart(Units{}, rows)
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -245,7 +245,7 @@ func TestChart(t *testing.T) {
 		t.Errorf("a chart on one isochore: %+v, %v", m, err)
 	}
 	rows[2].Low, rows[2].Charge, rows[2].High = g(861), g(891), g(921) // 919 typed with its digits turned
-	if ch, err = NewChart(rows); err != nil {
+	if ch, err = NewChart(Units{}, rows); err != nil {
 		t.Fatal(err)
 	}
 	if m, err := ch.Misfits(gas.Nitrogen(), quantity.StandardAtmosphere); err != nil || len(m) != 1 || m[0].Row.Temperature != c(0) || math.Abs(inPsi(m[0].Expected)-919.1) > 0.5 {
@@ -260,7 +260,7 @@ func TestChart(t *testing.T) {
 	if v := Judge(l, gauge(t, "ASME 4A", 2000, 2), reading(1040, 30), GuardBanded()); v.Class != Pass || math.Abs(inPsi(v.Target)-1040.3) > 0.1 {
 		t.Errorf("between rows: %s, target %.1f psi", v.Sentence, inPsi(v.Target))
 	}
-	if _, err := NewChart(rows[:1]); err == nil {
+	if _, err := NewChart(Units{}, rows[:1]); err == nil {
 		t.Error("a chart of one row was taken")
 	}
 }
@@ -427,7 +427,7 @@ func TestChartIsMonotone(t *testing.T) {
 			charge += rapid.Float64Range(0, 200).Draw(rt, "rise")
 			rows[i] = ChartRow{quantity.Temperature(at), g(charge - 20), g(charge), g(charge + 20)}
 		}
-		ch, err := NewChart(rows)
+		ch, err := NewChart(Units{}, rows)
 		if err != nil {
 			rt.Fatal(err)
 		}

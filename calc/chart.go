@@ -1,6 +1,7 @@
 package calc
 
 import (
+	"cmp"
 	"errors"
 	"fmt"
 	"math"
@@ -18,11 +19,14 @@ type ChartRow struct {
 
 // Chart is the manual's own table. Between rows it is interpolated in straight lines, which never leave the range of their
 // two rows; beyond the first and last row it says nothing.
-type Chart struct{ rows []ChartRow }
+type Chart struct {
+	in   Units // of its errors
+	rows []ChartRow
+}
 
 // NewChart takes rows in any order. It needs two or more, of different temperatures, each with low <= charge <= high and all
 // three not falling with temperature.
-func NewChart(rows []ChartRow) (*Chart, error) {
+func NewChart(in Units, rows []ChartRow) (*Chart, error) {
 	if len(rows) < 2 {
 		return nil, errors.New("a chart needs two rows or more")
 	}
@@ -35,16 +39,16 @@ func NewChart(rows []ChartRow) (*Chart, error) {
 	})
 	for i, r := range rs {
 		if !(r.Low > 0 && r.Low <= r.Charge && r.Charge <= r.High && !math.IsInf(float64(r.High), 0)) {
-			return nil, fmt.Errorf("the chart row at %s has low %s, charge %s, high %s: they must rise", fahrenheit(r.Temperature), psi(r.Low), psi(r.Charge), psi(r.High))
+			return nil, fmt.Errorf("the chart row at %s has low %s, charge %s, high %s: they must rise", in.Temperature(r.Temperature), in.Pressure(r.Low), in.Pressure(r.Charge), in.Pressure(r.High))
 		}
 		if i > 0 && !(r.Temperature > rs[i-1].Temperature) {
-			return nil, fmt.Errorf("the chart has two rows at %s", fahrenheit(r.Temperature))
+			return nil, fmt.Errorf("the chart has two rows at %s", in.Temperature(r.Temperature))
 		}
 		if i > 0 && (r.Low < rs[i-1].Low || r.Charge < rs[i-1].Charge || r.High < rs[i-1].High) {
-			return nil, fmt.Errorf("the chart falls from %s to %s; pressure rises with temperature", fahrenheit(rs[i-1].Temperature), fahrenheit(r.Temperature))
+			return nil, fmt.Errorf("the chart falls from %s to %s; pressure rises with temperature", in.Temperature(rs[i-1].Temperature), in.Temperature(r.Temperature))
 		}
 	}
-	return &Chart{rs}, nil
+	return &Chart{in, rs}, nil
 }
 
 // At returns the limits at a gas temperature, or a *quantity.RangeError outside the chart.
@@ -54,7 +58,12 @@ func (c *Chart) At(t quantity.Temperature) (low, charge, high quantity.GaugePres
 	}
 	first, last := c.rows[0], c.rows[len(c.rows)-1]
 	if !(t >= first.Temperature && t <= last.Temperature) {
-		return 0, 0, 0, &quantity.RangeError{Quantity: "gas temperature for the chart", Value: float64(t), Low: float64(first.Temperature), High: float64(last.Temperature), Unit: "K"}
+		name := cmp.Or(c.in.T, "F")
+		if _, err := t.InUnit(name); err != nil {
+			name = "F"
+		}
+		in := func(t quantity.Temperature) float64 { v, _ := t.InUnit(name); return v }
+		return 0, 0, 0, &quantity.RangeError{Quantity: "gas temperature for the chart", Value: in(t), Low: in(first.Temperature), High: in(last.Temperature), Unit: name}
 	}
 	i := 1
 	for t > c.rows[i].Temperature {
@@ -65,6 +74,9 @@ func (c *Chart) At(t quantity.Temperature) (low, charge, high quantity.GaugePres
 	mix := func(p, q quantity.GaugePressure) quantity.GaugePressure { return p + (q-p)*x }
 	return mix(a.Low, b.Low), mix(a.Charge, b.Charge), mix(a.High, b.High), nil
 }
+
+// Rows returns the rows, from the coldest.
+func (c *Chart) Rows() []ChartRow { return slices.Clone(c.rows) }
 
 // Misfit is a chart row that does not lie on the isochore through the chart as a whole: the usual typing error.
 type Misfit struct {

@@ -59,7 +59,7 @@ func (c cases) draw() (Limits, Gauge, Reading, Rule) {
 		unit, charge, tolerance, spans = "kPa", int64(4000+50*c.IntN(320)), int64(50*c.IntN(21)), []int64{10000, 16000, 25000, 40000}
 	}
 	at := func(m int64) quantity.GaugePressure { return c.gauge(unit, m, exponent) }
-	l := Limits{Gas: pick(c, gas.Nitrogen(), gas.Nitrogen(), gas.DryAir()), Ambient: quantity.StandardAtmosphere, Reference: pick(c, quantity.Temperature(293.15), quantity.Temperature(288.15), c.temperature(15, 25))}
+	l := Limits{In: Units{P: unit, T: pick(c, "C", "F")}, Gas: pick(c, gas.Nitrogen(), gas.Nitrogen(), gas.DryAir()), Ambient: quantity.StandardAtmosphere, Reference: pick(c, quantity.Temperature(293.15), quantity.Temperature(288.15), c.temperature(15, 25))}
 	l.Charge, l.Minus, l.Plus = at(charge), at(tolerance), at(tolerance)
 	if c.IntN(4) == 0 {
 		l.Minus = 0
@@ -73,7 +73,7 @@ func (c cases) draw() (Limits, Gauge, Reading, Rule) {
 			p := charge + i*charge/20
 			rows = append(rows, ChartRow{quantity.Temperature(233.15 + float64(15*i)), at(p - tolerance), at(p), at(p + tolerance)})
 		}
-		chart, err := NewChart(rows)
+		chart, err := NewChart(l.In, rows)
 		if err != nil {
 			panic(err) // the rows rise
 		}
@@ -138,7 +138,7 @@ func digest(n int) (string, map[Class]int) {
 		seen[v.Class]++
 		fmt.Fprintln(h, v.Class, v.Reasons, int64(v.Corrected), int64(v.Low), int64(v.Target), int64(v.High), int64(v.U), v.Next, v.Sentence)
 		for _, t := range v.Budget {
-			fmt.Fprintln(h, t.Name, t.Stated, psi(t.U))
+			fmt.Fprintln(h, t.Name, t.Stated, l.In.Pressure(t.U))
 		}
 		o := Before(l, dial, r.Temperature, r.Ambient, rule)
 		fmt.Fprintln(h, o.Class, o.Reasons, int64(o.Low), int64(o.Target), int64(o.High), int64(o.U), o.Next, o.Sentence)

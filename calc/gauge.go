@@ -156,34 +156,40 @@ func (g Gauge) uncertainty(reading quantity.GaugePressure, at quantity.Temperatu
 }
 
 // named describes a gauge of the choice below to somebody who looks for one.
-func (g Gauge) named() string {
-	return fmt.Sprintf("%s, 0 to %s, divisions of %s or finer", g.Accuracy, psi(g.Span), psi(g.Graduation))
+func (g Gauge) named(in Units) string {
+	return fmt.Sprintf("%s, 0 to %s, divisions of %s or finer", g.Accuracy, in.Pressure(g.Span), in.Pressure(g.Graduation))
 }
 
-// Gauges to choose from when the one at hand will not do, coarse to fine: grade, and divisions in the span. Ranges in psi.
-// (Common practice, no source.)
-var (
-	choiceGrades = []struct {
-		grade     string
-		divisions quantity.GaugePressure
-	}{{"B", 100}, {"A", 100}, {"2A", 200}, {"3A", 400}, {"4A", 1000}}
-	choiceSpans = []quantity.GaugePressure{100, 200, 300, 600, 1000, 1500, 2000, 3000, 5000, 10000}
-)
+// Gauges to choose from when the one at hand will not do, coarse to fine: class, and divisions in the span; by the unit of the
+// ranges. (Common practice, no source.)
+var choices = map[string]struct {
+	classes   []string
+	divisions []quantity.GaugePressure
+	spans     []quantity.GaugePressure
+}{
+	"psi": {[]string{"ASME B", "ASME A", "ASME 2A", "ASME 3A", "ASME 4A"}, []quantity.GaugePressure{100, 100, 200, 400, 1000}, []quantity.GaugePressure{100, 200, 300, 600, 1000, 1500, 2000, 3000, 5000, 10000}},
+	"bar": {[]string{"EN 2.5", "EN 1.6", "EN 1", "EN 0.6", "EN 0.25", "EN 0.1"}, []quantity.GaugePressure{50, 100, 100, 200, 400, 1000}, []quantity.GaugePressure{6, 10, 16, 25, 40, 60, 100, 160, 250, 400, 600}},
+}
 
 // betterGauge names the coarsest gauge with which a reading's dial adds so little that the standard uncertainty on the dial
 // stays below most, given what the other inputs contribute; nil when no gauge would do. The span is the smallest that has
 // the reading in its lower three quarters, where a dial is read (UFC 4-390-01).
-func betterGauge(reading quantity.GaugePressure, at quantity.Temperature, others, most quantity.GaugePressure) *Gauge {
-	for _, span := range choiceSpans {
-		if span *= onePsi; reading > span*3/4 {
+func betterGauge(in Units, reading quantity.GaugePressure, at quantity.Temperature, others, most quantity.GaugePressure) *Gauge {
+	unit, one := "psi", onePsi
+	if in.P != "" && in.P != "psi" {
+		unit, one = "bar", oneBar
+	}
+	offer := choices[unit]
+	for _, span := range offer.spans {
+		if span *= one; reading > span*3/4 {
 			continue
 		}
-		for _, c := range choiceGrades {
-			accuracy, err := ASMEGrade(c.grade)
+		for i, class := range offer.classes {
+			accuracy, err := ParseAccuracy(class)
 			if err != nil {
 				continue
 			}
-			g := Gauge{Span: span, Accuracy: accuracy, Graduation: span / c.divisions}
+			g := Gauge{Span: span, Accuracy: accuracy, Graduation: span / offer.divisions[i]}
 			u := g.uncertainty(reading, at)
 			if root(others, u[0], u[1], u[2]) <= most {
 				return &g

@@ -82,6 +82,7 @@ type Limits struct {
 	Rated               quantity.GaugePressure // of the charging valve; 0 not known
 	SystemPressure      quantity.GaugePressure // 0 not known
 	TempLow, TempHigh   quantity.Temperature   // 0 none
+	In                  Units                  // of the words
 }
 
 // Rule is how a value near a limit is decided (ILAC-G8:09/2019, JCGM 106): by a guard band of so many standard
@@ -234,14 +235,14 @@ func obstacles(l Limits, g Gauge, r Reading, target quantity.GaugePressure) []ob
 	case strings.TrimSpace(r.Relieved.How) == "" || !r.Relieved.Seen:
 		add("relieve the fluid side and note how, and the pressure seen there", "it is not said how the fluid side was relieved and what pressure was seen there")
 	case !(r.Relieved.FluidPressure <= relievedBelow):
-		add(relieve, "hydraulic pressure was not relieved: %s on the fluid side", psi(r.Relieved.FluidPressure))
+		add(relieve, "hydraulic pressure was not relieved: %s on the fluid side", l.In.Pressure(r.Relieved.FluidPressure))
 	}
 	if l.looksLikeFluid(r.Gauge, target) {
-		add(relieve, "the reading of %s agrees with system pressure %s: the gauge is then reading the fluid", psi(r.Gauge), psi(l.SystemPressure))
+		add(relieve, "the reading of %s agrees with system pressure %s: the gauge is then reading the fluid", l.In.Pressure(r.Gauge), l.In.Pressure(l.SystemPressure))
 	}
 	why = append(why, g.obstacles()...)
 	if !(r.Gauge > 0 && r.Gauge >= g.SpanLow && r.Gauge <= g.Span) {
-		add("use a gauge whose span holds the pressure", "the reading of %s is outside the gauge's span of %s to %s", psi(r.Gauge), psi(g.SpanLow), psi(g.Span))
+		add("use a gauge whose span holds the pressure", "the reading of %s is outside the gauge's span of %s to %s", l.In.Pressure(r.Gauge), l.In.Pressure(g.SpanLow), l.In.Pressure(g.Span))
 	}
 	why = append(why, l.ambientObstacles(r.Ambient)...)
 	switch r.TemperatureFrom {
@@ -255,7 +256,7 @@ func obstacles(l Limits, g Gauge, r Reading, target quantity.GaugePressure) []ob
 		add("take the gas temperature: a probe on the shell, or the air after a soak", "the gas temperature is not known")
 	}
 	if l.Rated > 0 && r.Gauge > l.Rated {
-		add("bleed below the valve's rating and follow the manual on a valve that was over-pressed", "the charging valve is rated %s, below the reading of %s", psi(l.Rated), psi(r.Gauge))
+		add("bleed below the valve's rating and follow the manual on a valve that was over-pressed", "the charging valve is rated %s, below the reading of %s", l.In.Pressure(l.Rated), l.In.Pressure(r.Gauge))
 	}
 	return append(why, l.obstacles(r.Temperature)...)
 }
@@ -292,10 +293,10 @@ func (l Limits) obstacles(at quantity.Temperature) []obstacle {
 		why = append(why, obstacle{fmt.Sprintf(format, args...), remedy})
 	}
 	if l.TempLow > 0 && at < l.TempLow {
-		add("let the unit warm into the sheet's range", "the gas temperature of %s is below the sheet's least, %s", fahrenheit(at), fahrenheit(l.TempLow))
+		add("let the unit warm into the sheet's range", "the gas temperature of %s is below the sheet's least, %s", l.In.Temperature(at), l.In.Temperature(l.TempLow))
 	}
 	if l.TempHigh > 0 && at > l.TempHigh {
-		add("let the unit cool into the sheet's range", "the gas temperature of %s is above the sheet's highest, %s", fahrenheit(at), fahrenheit(l.TempHigh))
+		add("let the unit cool into the sheet's range", "the gas temperature of %s is above the sheet's highest, %s", l.In.Temperature(at), l.In.Temperature(l.TempHigh))
 	}
 	return why
 }
@@ -353,18 +354,18 @@ func (v *comparison) next(l Limits, g Gauge, r Reading, rule Rule, reading quant
 	case Pass:
 		return "nothing; the charge is in limits"
 	case ConditionalPass:
-		return v.trim(l, g, r) + ", to bring it clear of the limit, as the manual allows; " + v.better(r, rule, reading, v.inside())
+		return v.trim(l, g, r) + ", to bring it clear of the limit, as the manual allows; " + v.better(l, r, rule, reading, v.inside())
 	case ConditionalFail:
-		return v.trim(l, g, r) + "; " + v.better(r, rule, reading, -v.inside())
+		return v.trim(l, g, r) + "; " + v.better(l, r, rule, reading, -v.inside())
 	case NotMeasurable:
-		return v.better(r, rule, reading, v.roomOnTarget())
+		return v.better(l, r, rule, reading, v.roomOnTarget())
 	}
 	return v.trim(l, g, r) + "; then look for the cause, and remove from service if the manual says so"
 }
 
 // trim says by how much to charge or bleed to the target, as this gauge would show it here and now, once settled.
 func (v *comparison) trim(l Limits, g Gauge, r Reading) string {
-	target, what := v.Target.Abs(l.Ambient), fmt.Sprintf("on gauge %s at %s", g.Name, fahrenheit(r.Temperature))
+	target, what := v.Target.Abs(l.Ambient), fmt.Sprintf("on gauge %s at %s", g.Name, l.In.Temperature(r.Temperature))
 	var err error
 	if l.Chart == nil {
 		target, err = Correct(l.Gas, target, l.Reference, r.Temperature)
@@ -375,13 +376,13 @@ func (v *comparison) trim(l Limits, g Gauge, r Reading) string {
 	dial, shown := step(g.shows(target.Gauge(r.Ambient))), step(r.Gauge)
 	switch {
 	case l.Rated > 0 && dial > l.Rated:
-		return fmt.Sprintf("do not charge: the valve is rated %s, below the %s needed at %s", psi(l.Rated), psi(dial), fahrenheit(r.Temperature))
+		return fmt.Sprintf("do not charge: the valve is rated %s, below the %s needed at %s", l.In.Pressure(l.Rated), l.In.Pressure(dial), l.In.Temperature(r.Temperature))
 	case dial > g.Span:
-		return fmt.Sprintf("charge with another gauge: %s is needed at %s and gauge %s ends at %s", psi(dial), fahrenheit(r.Temperature), g.Name, psi(g.Span))
+		return fmt.Sprintf("charge with another gauge: %s is needed at %s and gauge %s ends at %s", l.In.Pressure(dial), l.In.Temperature(r.Temperature), g.Name, l.In.Pressure(g.Span))
 	case dial < shown:
-		return fmt.Sprintf("bleed by about %s, to %s %s once settled", psi(shown-dial), psi(dial), what)
+		return fmt.Sprintf("bleed by about %s, to %s %s once settled", l.In.Pressure(shown-dial), l.In.Pressure(dial), what)
 	}
-	return fmt.Sprintf("charge by about %s, to %s %s once settled", psi(dial-shown), psi(dial), what)
+	return fmt.Sprintf("charge by about %s, to %s %s once settled", l.In.Pressure(dial-shown), l.In.Pressure(dial), what)
 }
 
 // roomOnTarget is the widest guard band with which a charge on target passes; where the target is itself a limit, with which
@@ -393,54 +394,58 @@ func (v *comparison) roomOnTarget() quantity.GaugePressure {
 	return (v.High - v.Low) / 2
 }
 
-// choose returns a gauge whose guard band would leave the room free, nil when the other inputs alone take it.
-func (v *comparison) choose(r Reading, rule Rule, reading, room quantity.GaugePressure) *Gauge {
+// choose returns a gauge whose guard band would leave the room free, nil when none would.
+func (v *comparison) choose(l Limits, r Reading, rule Rule, reading, room quantity.GaugePressure) *Gauge {
 	byP := quantity.GaugePressure(v.ref.DpDRho / v.at.DpDRho)
-	return betterGauge(reading, r.Temperature, combined(v.Budget[gaugeTerms:])/byP, room/rule.guard()/byP)
+	return betterGauge(l.In, reading, r.Temperature, combined(v.Budget[gaugeTerms:])/byP, room/rule.guard()/byP)
 }
 
 // better names that gauge, or says what stands in the way of any.
-func (v *comparison) better(r Reading, rule Rule, reading, room quantity.GaugePressure) string {
-	if b := v.choose(r, rule, reading, room); b != nil {
-		return "to decide, read again with a better gauge: " + b.named()
+func (v *comparison) better(l Limits, r Reading, rule Rule, reading, room quantity.GaugePressure) string {
+	if b := v.choose(l, r, rule, reading, room); b != nil {
+		return "to decide, read again with a better gauge: " + b.named(l.In)
 	}
-	return v.noBetter(r, rule)
+	return v.noBetter(l, r, rule, room)
 }
 
-// noBetter blames the largest term that a gauge of any grade would keep: its own temperature is one.
-func (v *comparison) noBetter(r Reading, rule Rule) string {
-	worst := slices.MaxFunc(v.Budget[gaugeTerms-1:], func(a, b Term) int { return cmp.Compare(a.U, b.U) })
+func (v *comparison) noBetter(l Limits, r Reading, rule Rule, room quantity.GaugePressure) string {
+	others := v.Budget[gaugeTerms:]
+	if warmth := v.Budget[gaugeTerms-1:]; rule.guard()*combined(others) <= room && rule.guard()*combined(warmth) > room {
+		return fmt.Sprintf("no better gauge alone would decide: a gauge at %s is away from its 20 C by so much that +/-%s remain; bring gauge and unit nearer to it",
+			l.In.Temperature(r.Temperature), l.In.Pressure(rule.guard()*warmth[0].U))
+	}
+	worst := slices.MaxFunc(others, func(a, b Term) int { return cmp.Compare(a.U, b.U) })
 	soak := ""
 	if worst.Name == gasTemperature && r.TemperatureFrom == AmbientAfterSoak {
 		soak = "; repeat after a longer soak or with a shell probe"
 	}
-	return fmt.Sprintf("no better gauge alone would decide: %s leaves +/-%s%s", worst.Name, psi(rule.guard()*worst.U), soak)
+	return fmt.Sprintf("no better gauge alone would decide: %s leaves +/-%s%s", worst.Name, l.In.Pressure(rule.guard()*worst.U), soak)
 }
 
 var temperatureWords = map[TemperatureSource]string{ShellProbe: "by a probe on the shell", AmbientAfterSoak: "by the air after a soak"}
 
 // sentence explains the verdict with its numbers to somebody who was not there.
 func (v *comparison) sentence(l Limits, g Gauge, r Reading, w quantity.GaugePressure) string {
-	inside, band, because := v.inside(), psi(w), ""
+	inside, band, because := v.inside(), l.In.Pressure(w), ""
 	switch v.Class {
 	case Pass:
-		because = psi(inside) + " inside, and the guard band is " + band
+		because = l.In.Pressure(inside) + " inside, and the guard band is " + band
 	case ConditionalPass:
-		because = psi(inside) + " inside, less than the guard band of " + band
+		because = l.In.Pressure(inside) + " inside, less than the guard band of " + band
 	case ConditionalFail:
-		because = psi(-inside) + " outside, but less than the guard band of " + band
+		because = l.In.Pressure(-inside) + " outside, but less than the guard band of " + band
 	case Fail:
-		because = psi(-inside) + " outside, more than the guard band of " + band
+		because = l.In.Pressure(-inside) + " outside, more than the guard band of " + band
 	default:
 		because = "narrower than twice the guard band of " + band + ", so no reading of this gauge could pass"
 	}
-	corrected := ", which is " + psi(v.Corrected) + " at " + fahrenheit(l.Reference)
+	corrected := ", which is " + l.In.Pressure(v.Corrected) + " at " + l.In.Temperature(l.Reference)
 	if l.Chart != nil {
-		corrected = ", which is " + psi(v.Corrected) + " at the chart's ambient pressure"
+		corrected = ", which is " + l.In.Pressure(v.Corrected) + " at the chart's ambient pressure"
 	}
 	class := v.Class.String()
-	return strings.ToUpper(class[:1]) + class[1:] + ": gauge " + g.Name + " showed " + psi(r.Gauge) + " at " + fahrenheit(r.Temperature) + " " + temperatureWords[r.TemperatureFrom] +
-		corrected + ", known to +/-" + psi(v.U) + " (k = 2); the limits are " + psi(v.Low) + " to " + psi(v.High) + ": " + because +
+	return strings.ToUpper(class[:1]) + class[1:] + ": gauge " + g.Name + " showed " + l.In.Pressure(r.Gauge) + " at " + l.In.Temperature(r.Temperature) + " " + temperatureWords[r.TemperatureFrom] +
+		corrected + ", known to +/-" + l.In.Pressure(v.U) + " (k = 2); the limits are " + l.In.Pressure(v.Low) + " to " + l.In.Pressure(v.High) + ": " + because +
 		"; the chance that it is in limits is " + percent(v.Conformance) + "."
 }
 

@@ -272,7 +272,7 @@ func Inspect(dir string, id record.BookID, bad func(where string, err error)) (*
 	if _, err := os.Stat(dir); err != nil {
 		return nil, fmt.Errorf("%w: %w", ErrNoBook, err)
 	}
-	st, err := store.Open(dir)
+	st, changed, err := store.Inspect(dir)
 	if err != nil {
 		return nil, err
 	}
@@ -288,5 +288,5 @@ func Inspect(dir string, id record.BookID, bad func(where string, err error)) (*
 		entries = append(entries, v)
 		return nil
 	})
-	return Fold(id, entries), errors.Join(err, st.Close())
+	return Fold(id, entries), errors.Join(changed, err, st.Close())
 }

@@ -16,8 +16,9 @@ type Meaning struct {
 	Hands    []*Hand // in the order of their admission
 	Units    []*Unit // by part, then serial
 	Gauges   []*Gauge
-	Sheets   []*Sheet // by part, then from the earliest effective date
-	Entries  []Item   // all entries held, in display order
+	Sheets   []*Sheet  // by part, then from the earliest effective date
+	Bottles  []*Bottle // by name
+	Entries  []Item    // all entries held, in display order
 	items    map[record.ID]int
 	set      *set
 	roster   *roster
@@ -51,6 +52,12 @@ type Unit struct {
 // Gauge is a pressure gauge as its newest entry describes it.
 type Gauge struct {
 	record.Gauge
+	ID record.ID
+}
+
+// Bottle is a gas bottle as its newest entry describes it.
+type Bottle struct {
+	record.Bottle
 	ID record.ID
 }
 
@@ -199,7 +206,7 @@ func (m *Meaning) knows(n *node, unit record.UnitRef, gauge string) string {
 
 func correctable(k record.Kind) bool {
 	switch k {
-	case record.KindReading, record.KindCharge, record.KindSheet, record.KindGauge, record.KindUnitFitted, record.KindUnitRemoved:
+	case record.KindReading, record.KindCharge, record.KindSheet, record.KindGauge, record.KindUnitFitted, record.KindUnitRemoved, record.KindBottle:
 		return true
 	}
 	return false
@@ -309,7 +316,7 @@ func (m *Meaning) people() {
 }
 
 func (m *Meaning) equipment() {
-	units, gauges := map[record.UnitRef]*Unit{}, map[string]*Gauge{}
+	units, gauges, bottles := map[record.UnitRef]*Unit{}, map[string]*Gauge{}, map[string]*Bottle{}
 	for i := range m.Entries {
 		it := &m.Entries[i]
 		if !it.Counts() {
@@ -327,6 +334,8 @@ func (m *Meaning) equipment() {
 			units[b.Unit].Aircraft, units[b.Unit].Position = "", ""
 		case record.Gauge:
 			gauges[b.Asset] = &Gauge{b, it.ID()}
+		case record.Bottle:
+			bottles[b.Name] = &Bottle{b, it.ID()}
 		case record.Sheet:
 			m.Sheets = append(m.Sheets, &Sheet{b, it.ID()})
 		case record.Reading:
@@ -346,6 +355,10 @@ func (m *Meaning) equipment() {
 	for _, g := range gauges {
 		m.Gauges = append(m.Gauges, g)
 	}
+	for _, b := range bottles {
+		m.Bottles = append(m.Bottles, b)
+	}
+	slices.SortFunc(m.Bottles, func(a, b *Bottle) int { return cmp.Compare(a.Name, b.Name) })
 	slices.SortFunc(m.Units, func(a, b *Unit) int {
 		return cmp.Or(cmp.Compare(a.Ref.Part, b.Ref.Part), cmp.Compare(a.Ref.Serial, b.Ref.Serial))
 	})

@@ -23,6 +23,11 @@ var maySign = map[record.Kind][]record.Role{
 	record.KindCorrection:     {record.RoleLead, record.RoleTechnician, record.RoleInspector},
 	record.KindWithdrawal:     {record.RoleLead, record.RoleTechnician, record.RoleInspector},
 	record.KindCountersign:    {record.RoleInspector, record.RoleLead},
+	record.KindBottle:         {record.RoleLead, record.RoleTechnician},
+	record.KindSettling:       {record.RoleTechnician},
+	record.KindHold:           {record.RoleTechnician, record.RoleInspector},
+	record.KindTrace:          {record.RoleTechnician, record.RoleInspector},
+	record.KindRecall:         {record.RoleLead, record.RoleInspector},
 }
 
 // MayRoles returns the roles that may sign a kind, nil for the founding entry and for kinds this version does not know.

@@ -16,6 +16,8 @@ type (
 	TemperatureDifference float64 // kelvins
 	Volume                float64 // cubic metres
 	Elevation             float64 // geopotential metres
+	VolumeRate            float64 // cubic metres a second
+	PressureRate          float64 // pascals a second
 )
 
 // StandardAtmosphere is 101,325 Pa exactly (NIST SP 811, appendix B.8).

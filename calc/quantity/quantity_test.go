@@ -11,6 +11,8 @@ import (
 func TestFactors(t *testing.T) {
 	gauge := func(s string) (float64, error) { v, err := ParseGauge(s); return float64(v), err }
 	volume := func(s string) (float64, error) { v, err := ParseVolume(s); return float64(v), err }
+	flow := func(s string) (float64, error) { v, err := parseAs(s, Written.VolumeRate); return float64(v), err }
+	leak := func(s string) (float64, error) { v, err := parseAs(s, Written.PressureRate); return float64(v), err }
 	elevation := func(s string) (float64, error) { v, err := ParseElevation(s); return float64(v), err }
 	for _, c := range []struct {
 		in    string
@@ -31,6 +33,17 @@ func TestFactors(t *testing.T) {
 		{"1mL", volume, 1e-6, 0},
 		{"1L", volume, 1e-3, 0},
 		{"1USgal", volume, 3.785412e-3, 1e-7},
+		{"1in3/min", flow, 2.731177e-7, 2e-7},   // from memory of the same appendix
+		{"1USgal/min", flow, 6.309020e-5, 1e-7}, // from memory of the same appendix
+		{"1L/min", flow, 1e-3 / 60, 1e-15},
+		{"3600mL/h", flow, 1e-6, 1e-15},
+		{"60cm3/min", flow, 1e-6, 1e-15},
+		{"60in3/min", flow, 16.387064e-6, 1e-15},
+		{"1in3/s", flow, 16.387064e-6, 1e-15},
+		{"86400psi/day", leak, 6894.757293168361, 1e-15},
+		{"0.864bar/day", leak, 1, 1e-15},
+		{"60psi/min", leak, 6894.757293168361, 1e-15},
+		{"0.0006bar/min", leak, 1, 1e-15},
 		{"1ft", elevation, 0.3048, 0},
 		{"1m", elevation, 1, 0},
 	} {

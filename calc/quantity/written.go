@@ -21,9 +21,11 @@ const (
 	temperature
 	volume
 	length
+	volumeRate
+	pressureRate
 )
 
-var kindNames = [...]string{"a pressure", "a temperature", "a volume", "an elevation"}
+var kindNames = [...]string{"a pressure", "a temperature", "a volume", "an elevation", "a volume over time", "a pressure over time"}
 
 // unit converts to SI: si = (value + offset) * factor.
 type unit struct {
@@ -52,6 +54,16 @@ var units = []unit{
 	{"USgal", volume, 231 * 16.387064e-6, 0},
 	{"ft", length, 0.3048, 0},
 	{"m", length, 1, 0},
+	{"mL/h", volumeRate, 1e-6 / 3600, 0},
+	{"cm3/min", volumeRate, 1e-6 / 60, 0},
+	{"in3/min", volumeRate, 16.387064e-6 / 60, 0},
+	{"in3/s", volumeRate, 16.387064e-6, 0},
+	{"L/min", volumeRate, 1e-3 / 60, 0},
+	{"USgal/min", volumeRate, 231 * 16.387064e-6 / 60, 0},
+	{"psi/day", pressureRate, 0.45359237 * 9.80665 / (0.0254 * 0.0254) / 86400, 0},
+	{"bar/day", pressureRate, 1e5 / 86400.0, 0},
+	{"psi/min", pressureRate, 0.45359237 * 9.80665 / (0.0254 * 0.0254) / 60, 0},
+	{"bar/min", pressureRate, 1e5 / 60.0, 0},
 }
 
 func unitNamed(name string) (unit, bool) {
@@ -238,6 +250,24 @@ func (w Written) Elevation() (Elevation, error) {
 	return Elevation(v), err
 }
 
+// VolumeRate returns the value in cubic metres a second; it must be positive. A leak is of free gas, a flow of fluid.
+func (w Written) VolumeRate() (VolumeRate, error) {
+	v, err := w.si(volumeRate, false)
+	if err == nil && v <= 0 {
+		err = &SyntaxError{w.String(), "is no rate: it must be above zero"}
+	}
+	return VolumeRate(v), err
+}
+
+// PressureRate returns the value in pascals a second; it must be positive.
+func (w Written) PressureRate() (PressureRate, error) {
+	v, err := w.si(pressureRate, false)
+	if err == nil && v <= 0 {
+		err = &SyntaxError{w.String(), "is no rate: it must be above zero"}
+	}
+	return PressureRate(v), err
+}
+
 func parseAs[T any](s string, as func(Written) (T, error)) (T, error) {
 	w, err := Parse(s)
 	if err != nil {
@@ -281,4 +311,15 @@ func (p Pressure) InUnit(name string) (float64, error) { return inUnit(float64(p
 // InUnit returns the temperature in a unit of the table.
 func (t Temperature) InUnit(name string) (float64, error) {
 	return inUnit(float64(t), name, temperature)
+}
+
+// InUnit returns the volume in a unit of the table.
+func (v Volume) InUnit(name string) (float64, error) { return inUnit(float64(v), name, volume) }
+
+// InUnit returns the rate in a unit of the table.
+func (r VolumeRate) InUnit(name string) (float64, error) { return inUnit(float64(r), name, volumeRate) }
+
+// InUnit returns the rate in a unit of the table.
+func (r PressureRate) InUnit(name string) (float64, error) {
+	return inUnit(float64(r), name, pressureRate)
 }

@@ -3,7 +3,6 @@ package main
 import (
 	"errors"
 	"fmt"
-	"path/filepath"
 	"slices"
 	"text/tabwriter"
 
@@ -11,8 +10,6 @@ import (
 
 	"example.org/chargehand/calc"
 	"example.org/chargehand/ledger"
-	"example.org/chargehand/ledger/audit"
-	"example.org/chargehand/ledger/record"
 	"example.org/chargehand/ledger/verdict"
 )
 
@@ -39,6 +36,7 @@ type boardRow struct {
 	Read         string  `json:"read,omitempty"`
 	Entry        string  `json:"entry,omitempty"`
 	Next         string  `json:"next"`
+	judged       verdict.Judged
 	urgency      int
 }
 
@@ -54,23 +52,31 @@ func newBoard() *cobra.Command {
 			return err
 		}
 		defer func() { err = errors.Join(err, b.Close()) }()
-		rows := board(b.Meaning())
+		rows, in := board(b.Meaning()), verdict.UnitsOf(b.Meaning())
 		if asJSON {
 			return writeJSON(cmd.OutOrStdout(), rows)
 		}
 		w := tabwriter.NewWriter(cmd.OutOrStdout(), 0, 0, 2, ' ', 0)
-		fmt.Fprintln(w, "VERDICT\tUNIT\tWHERE\tCORRECTED\tLIMITS\tREAD\tENTRY\tNEXT")
+		fmt.Fprintln(w, "VERDICT\tUNIT\tWHERE\tCORRECTED\tLIMITS\tREAD")
 		for _, r := range rows {
 			where, corrected, limits := "not fitted", "", ""
 			if r.Aircraft != "" {
 				where = r.Aircraft + ", " + r.Position
 			}
 			if r.CorrectedPsi != 0 {
-				corrected, limits = fmt.Sprintf("%.0f psi", r.CorrectedPsi), fmt.Sprintf("%.0f to %.0f psi", r.LowPsi, r.HighPsi)
+				corrected, limits = in.Pressure(r.judged.Corrected), in.Between(r.judged.Low, r.judged.High)
 			}
-			fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\t%s\t%.8s\t%s\n", r.Verdict, r.Unit, where, corrected, limits, r.Read, r.Entry, r.Next)
+			fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\t%s\n", r.Verdict, r.Unit, where, corrected, limits, r.Read)
 		}
-		return w.Flush()
+		if err := w.Flush(); err != nil {
+			return err
+		}
+		for _, r := range rows {
+			if r.urgency < urgency(nil) {
+				fmt.Fprintf(cmd.OutOrStdout(), "\n%s, entry %.8s: %s\n", r.Unit, r.Entry, r.Next)
+			}
+		}
+		return nil
 	}
 	return cmd
 }
@@ -84,9 +90,9 @@ func board(m *ledger.Meaning) []boardRow {
 			body := m.Item(id).Body
 			if j, err := verdict.Judge(m, id, body); err == nil { // a unit's work always has a verdict
 				at, _ := ledger.Done(body)
-				r.Verdict, r.Next, r.Read, r.Entry, r.urgency = j.Class.String(), j.Next, clock(at), id.String(), urgency(&j)
+				r.Verdict, r.Next, r.Read, r.Entry, r.judged, r.urgency = j.Class.String(), j.Next, clock(at), id.String(), j, urgency(&j)
 				if j.Class != calc.NotAssessable {
-					r.CorrectedPsi, r.LowPsi, r.HighPsi = show(j.Corrected.InUnit("psi")), show(j.Low.InUnit("psi")), show(j.High.InUnit("psi"))
+					r.CorrectedPsi, r.LowPsi, r.HighPsi = inPsi(j.Corrected), inPsi(j.Low), inPsi(j.High)
 				}
 			}
 		}
@@ -94,85 +100,4 @@ func board(m *ledger.Meaning) []boardRow {
 	}
 	slices.SortStableFunc(rows, func(a, b boardRow) int { return a.urgency - b.urgency })
 	return rows
-}
-
-func newAudit() *cobra.Command {
-	var h home
-	var founding string
-	var asJSON bool
-	cmd := &cobra.Command{Use: "audit", Short: "Verify every signature, line, authority and verdict of the book", Args: usageArgs(cobra.NoArgs),
-		Long: "Verify the book. Needs no key. Exit status 0: nothing found; 1: findings; 3: could not audit."}
-	addHome(cmd, &h, false)
-	addJSON(cmd, &asJSON)
-	cmd.Flags().StringVar(&founding, "founding", "", "the founding fingerprint as given to you from outside, 64 digits")
-	cmd.RunE = func(cmd *cobra.Command, _ []string) error {
-		id, dir, err := h.id()
-		if err != nil {
-			return err
-		}
-		var want *record.BookID
-		if founding != "" {
-			w, err := record.ParseBookID(founding)
-			if err != nil {
-				return usageError("--founding: "+err.Error(), "Copy all 64 digits")
-			}
-			want = &w
-		}
-		var bad []audit.Unreadable
-		m, err := ledger.Inspect(filepath.Join(dir, "store"), id, func(where string, err error) {
-			bad = append(bad, audit.Unreadable{Where: where, Err: err})
-		})
-		if m == nil {
-			return explain(err, dir)
-		}
-		if err != nil {
-			bad = append(bad, audit.Unreadable{Where: "the store", Err: err})
-		}
-		r := audit.Run(m, bad, want)
-		if asJSON {
-			if err := writeJSON(cmd.OutOrStdout(), auditJSON(r)); err != nil {
-				return err
-			}
-		} else {
-			w := cmd.OutOrStdout()
-			fmt.Fprintf(w, "founding    %s\nfingerprint %s\nchecked     %d entries of %d lines, %d verdicts recomputed\n", r.Book, grouped(r.Fingerprint[:8]), r.Entries, r.Lines, r.Verdicts)
-			for _, f := range r.Findings {
-				name := "book"
-				if f.Entry != (record.ID{}) {
-					name = f.Entry.Short()
-				}
-				fmt.Fprintf(w, "%-11s %-8s %s\n", f.Severity, name, f.Sentence)
-			}
-			fmt.Fprintf(w, "found       %d\n", len(r.Findings))
-		}
-		if len(r.Findings) > 0 {
-			return errNo
-		}
-		return nil
-	}
-	return cmd
-}
-
-func auditJSON(r audit.Report) any {
-	type finding struct {
-		Severity string `json:"severity"`
-		Entry    string `json:"entry,omitempty"`
-		Sentence string `json:"sentence"`
-	}
-	out := struct {
-		Founding    string    `json:"founding"`
-		Fingerprint string    `json:"fingerprint"`
-		Entries     int       `json:"entries"`
-		Lines       int       `json:"lines"`
-		Verdicts    int       `json:"verdicts"`
-		Findings    []finding `json:"findings"`
-	}{r.Book.String(), fmt.Sprintf("%x", r.Fingerprint), r.Entries, r.Lines, r.Verdicts, []finding{}}
-	for _, f := range r.Findings {
-		x := finding{f.Severity.String(), f.Entry.String(), f.Sentence}
-		if f.Entry == (record.ID{}) {
-			x.Entry = ""
-		}
-		out.Findings = append(out.Findings, x)
-	}
-	return out
 }

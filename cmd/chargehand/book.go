@@ -13,10 +13,11 @@ import (
 
 	"example.org/chargehand/ledger"
 	"example.org/chargehand/ledger/record"
+	"example.org/chargehand/ledger/verdict"
 )
 
 func newBook() *cobra.Command {
-	return group("book", "Start a book, join one, or show this one", newBookStart(), newBookJoin(), newBookShow())
+	return group("book", "Start a book, join one, show or copy this one", newBookStart(), newBookJoin(), newBookShow(), newBookCopy())
 }
 
 func newBookStart() *cobra.Command {
@@ -28,12 +29,14 @@ func newBookStart() *cobra.Command {
 	cmd.Flags().StringVar(&f.Title, "title", "", "what the book is of, such as the field or team")
 	cmd.Flags().StringVar(&f.Name, "name", "", "your name")
 	cmd.Flags().StringVar(&f.Certificate, "certificate", "", "your certificate or employee number")
-	cmd.Flags().StringVar(&f.PressureUnit, "pressure-unit", "psi", "the book's own unit of pressure")
-	cmd.Flags().StringVar(&f.TemperatureUnit, "temperature-unit", "F", "the book's own unit of temperature")
+	pressure, temperature := choice{"psi", []string{"psi", "bar", "kPa", "MPa", "kgf/cm2"}}, choice{"F", []string{"F", "C"}}
+	cmd.Flags().Var(&pressure, "pressure-unit", "the book's own unit of pressure: what a bare number means, and what is shown")
+	cmd.Flags().Var(&temperature, "temperature-unit", "the book's own unit of temperature")
 	cmd.RunE = func(cmd *cobra.Command, _ []string) (err error) {
-		if err := requireFlags(cmd, "title", "name"); err != nil {
+		if err := fill(cmd, nil, needs("title", "name")...); err != nil {
 			return err
 		}
+		f.PressureUnit, f.TemperatureUnit = pressure.is, temperature.is
 		dir, err := h.folder()
 		if err != nil {
 			return err
@@ -42,7 +45,7 @@ func newBookStart() *cobra.Command {
 		if err != nil {
 			return err
 		}
-		key, undo, err := newFolder(dir, p)
+		key, undo, err := newFolder(cmd.Context(), dir, p)
 		if err != nil {
 			return err
 		}
@@ -59,7 +62,7 @@ func newBookStart() *cobra.Command {
 		if err != nil {
 			return err
 		}
-		if err := sealSecret(dir, secret, p); err != nil {
+		if err := sealSecret(cmd.Context(), dir, secret, p); err != nil {
 			return err
 		}
 		b, err := ledger.Found(filepath.Join(dir, "store"), key, f, time.Now)
@@ -77,18 +80,46 @@ func newBookStart() *cobra.Command {
 	return cmd
 }
 
+type bookJSON struct {
+	Title           string `json:"title"`
+	Founder         string `json:"founder"`
+	Founding        string `json:"founding"` // fingerprint of the founding entry, the book's id
+	Entries         int    `json:"entries"`
+	SetAside        int    `json:"set_aside"`
+	Lines           int    `json:"lines"`
+	Units           int    `json:"units"`
+	Gauges          int    `json:"gauges"`
+	Sheets          int    `json:"sheets"`
+	Hands           int    `json:"hands"`
+	PressureUnit    string `json:"pressure_unit"`
+	TemperatureUnit string `json:"temperature_unit"`
+	Fingerprint     string `json:"fingerprint"`
+	Folder          string `json:"folder"`
+}
+
 func newBookShow() *cobra.Command {
 	var h home
+	var asJSON bool
 	cmd := &cobra.Command{Use: "show", Short: "Show what this book is and how much it holds", Args: usageArgs(cobra.NoArgs)}
 	addHome(cmd, &h, false)
-	cmd.RunE = func(cmd *cobra.Command, _ []string) (err error) {
-		b, dir, err := h.open()
-		if err != nil {
-			return err
-		}
-		defer func() { err = errors.Join(err, b.Close()) }()
-		showBook(cmd, b.Meaning(), dir)
-		return nil
+	addJSON(cmd, &asJSON)
+	cmd.RunE = func(cmd *cobra.Command, _ []string) error {
+		return h.with(cmd, func(b *ledger.Book, dir string) error {
+			m := b.Meaning()
+			if !asJSON {
+				showBook(cmd, m, dir)
+				return nil
+			}
+			aside := 0
+			for i := range m.Entries {
+				if m.Entries[i].SetAside != "" {
+					aside++
+				}
+			}
+			in := verdict.UnitsOf(m)
+			return writeJSON(cmd.OutOrStdout(), bookJSON{m.Founding.Title, m.Founding.Name, m.Book.String(), len(m.Entries), aside, len(m.Frontier()), len(m.Units), len(m.Gauges), len(m.Sheets), len(m.Hands),
+				in.P, in.T, fmt.Sprintf("%x", m.Fingerprint()), dir})
+		})
 	}
 	return cmd
 }
@@ -117,28 +148,50 @@ func newHand() *cobra.Command {
 	return group("hand", "Who may sign, and as what", newHandList(), newHandAdmit(), newHandRetire())
 }
 
+type handJSON struct {
+	Name        string        `json:"name"`
+	Certificate string        `json:"certificate,omitempty"`
+	Roles       []record.Role `json:"roles"`
+	Keys        []keyJSON     `json:"keys"`
+}
+
+type keyJSON struct {
+	Key   string `json:"key"`
+	State string `json:"state"` // "may sign" or "retired"
+}
+
 func newHandList() *cobra.Command {
 	var h home
+	var asJSON bool
 	cmd := &cobra.Command{Use: "list", Short: "List the hands, their roles and keys", Args: usageArgs(cobra.NoArgs)}
 	addHome(cmd, &h, false)
-	cmd.RunE = func(cmd *cobra.Command, _ []string) (err error) {
-		b, _, err := h.open()
-		if err != nil {
-			return err
-		}
-		defer func() { err = errors.Join(err, b.Close()) }()
-		m := b.Meaning()
-		for _, hand := range m.Hands {
-			fmt.Fprintf(cmd.OutOrStdout(), "%s: %s\n", hand.Name, roleList(hand.Roles))
-			for _, k := range hand.Keys {
-				state := "may sign"
-				if !m.InGoodStanding(k) {
-					state = "retired"
+	addJSON(cmd, &asJSON)
+	cmd.RunE = func(cmd *cobra.Command, _ []string) error {
+		return h.with(cmd, func(b *ledger.Book, _ string) error {
+			m := b.Meaning()
+			hands := []handJSON{}
+			for _, hand := range m.Hands {
+				j := handJSON{Name: hand.Name, Certificate: hand.Certificate, Roles: hand.Roles}
+				for _, k := range hand.Keys {
+					state := "may sign"
+					if !m.InGoodStanding(k) {
+						state = "retired"
+					}
+					j.Keys = append(j.Keys, keyJSON{k.String(), state})
 				}
-				fmt.Fprintf(cmd.OutOrStdout(), "  key %s  %s\n", k, state)
+				hands = append(hands, j)
 			}
-		}
-		return nil
+			if asJSON {
+				return writeJSON(cmd.OutOrStdout(), hands)
+			}
+			for _, j := range hands {
+				fmt.Fprintf(cmd.OutOrStdout(), "%s: %s\n", j.Name, roleList(j.Roles))
+				for _, k := range j.Keys {
+					fmt.Fprintf(cmd.OutOrStdout(), "  key %s  %s\n", k.Key, k.State)
+				}
+			}
+			return nil
+		})
 	}
 	return cmd
 }
@@ -161,7 +214,7 @@ func newHandAdmit() *cobra.Command {
 	f.StringVar(&certificate, "certificate", "", "without --by-code: their certificate or employee number")
 	f.StringVar(&key, "key", "", "without --by-code: public key, 64 digits, from the first line of their key file")
 	given := func() ([]record.Role, error) {
-		if err := requireFlags(cmd, "role"); err != nil {
+		if err := fill(cmd, nil, needs("role")...); err != nil {
 			return nil, err
 		}
 		var rs []record.Role
@@ -174,8 +227,8 @@ func newHandAdmit() *cobra.Command {
 		}
 		return rs, nil
 	}
-	signing(cmd, &h, record.KindHandAdmitted, func(*ledger.Meaning, []string) (any, error) {
-		if err := requireFlags(cmd, "name", "key"); err != nil {
+	signing(cmd, &h, record.KindHandAdmitted, func(m *ledger.Meaning, _ []string) (any, error) {
+		if err := fill(cmd, m, needs("name", "key")...); err != nil {
 			return nil, err
 		}
 		rs, err := given()
@@ -209,7 +262,7 @@ func newHandRetire() *cobra.Command {
 	cmd.Flags().StringVar(&key, "key", "", "public key, 64 digits, from 'hand list'")
 	cmd.Flags().StringVar(&reason, "reason", "", "why")
 	return signing(cmd, &h, record.KindKeyRetired, func(m *ledger.Meaning, _ []string) (any, error) {
-		if err := requireFlags(cmd, "key", "reason"); err != nil {
+		if err := fill(cmd, m, needs("key", "reason")...); err != nil {
 			return nil, err
 		}
 		k, err := record.ParseKeyID(key)

@@ -108,7 +108,7 @@ func newConvert() *cobra.Command {
 				}
 				return err
 			}
-			if err := requireFlags(cmd, "at", "to"); err != nil {
+			if err := fill(cmd, nil, needs("at", "to")...); err != nil {
 				return err
 			}
 			if ambient.written.Unit != "" && height.written.Unit != "" {

@@ -60,7 +60,7 @@ func (h *home) id() (record.BookID, string, error) {
 	if errors.Is(err, os.ErrNotExist) {
 		return record.BookID{}, "", couldNot(fmt.Errorf("there is no book in %q", dir), "Start one with 'chargehand book start', or name another folder with --book")
 	} else if err != nil {
-		return record.BookID{}, "", err
+		return record.BookID{}, "", couldNot(fmt.Errorf("the file %q, which names the book, cannot be read: %w", filepath.Join(dir, "book"), plainly(err)), "Restore it from a backup, or see that you may read it")
 	}
 	id, err := record.ParseBookID(strings.TrimSpace(string(data)))
 	if err != nil {
@@ -74,6 +74,9 @@ func (h *home) open() (*ledger.Book, string, error) {
 	id, dir, err := h.id()
 	if err != nil {
 		return nil, "", err
+	}
+	if _, err := os.Stat(filepath.Join(dir, "store")); err != nil { // Open would begin an empty one
+		return nil, "", couldNot(fmt.Errorf("the folder %q names a book and has no store: %w", dir, plainly(err)), "Restore the folder store from a backup, or join again in a new folder")
 	}
 	b, err := ledger.Open(filepath.Join(dir, "store"), id, time.Now)
 	return b, dir, explain(err, dir)
@@ -113,14 +116,21 @@ func (h *home) passphrase(cmd *cobra.Command, prompt string) ([]byte, error) {
 		}
 		return bytes.TrimRight(line, "\r\n"), nil
 	}
-	in, ok := cmd.InOrStdin().(*os.File)
-	if !ok || !term.IsTerminal(int(in.Fd())) {
+	in := terminal(cmd)
+	if in == nil {
 		return nil, usageError("no terminal to ask for the passphrase on", "Name a file that holds it with --passphrase-file")
 	}
+	before, err := term.GetState(int(in.Fd()))
+	if err != nil {
+		return nil, err
+	}
 	fmt.Fprint(cmd.ErrOrStderr(), prompt)
-	p, err := term.ReadPassword(int(in.Fd()))
+	p, err := interruptible(cmd.Context(), func() ([]byte, error) { return term.ReadPassword(int(in.Fd())) })
 	fmt.Fprintln(cmd.ErrOrStderr())
-	return p, err
+	if err != nil {
+		return nil, errors.Join(errLeft, term.Restore(int(in.Fd()), before)) // the echo comes back
+	}
+	return p, nil
 }
 
 func (h *home) unlock(cmd *cobra.Command, dir string) (ed25519.PrivateKey, error) {
@@ -135,8 +145,8 @@ func (h *home) unlock(cmd *cobra.Command, dir string) (ed25519.PrivateKey, error
 	return key, err
 }
 
-// sign unlocks the key and signs a draft, and says so.
-func (h *home) sign(cmd *cobra.Command, b *ledger.Book, dir string, d ledger.Draft) (record.Verified, error) {
+// sign unlocks the key and signs a draft, and says so on w.
+func (h *home) sign(cmd *cobra.Command, w io.Writer, b *ledger.Book, dir string, d ledger.Draft) (record.Verified, error) {
 	key, err := h.unlock(cmd, dir)
 	if err != nil {
 		return record.Verified{}, err
@@ -146,26 +156,36 @@ func (h *home) sign(cmd *cobra.Command, b *ledger.Book, dir string, d ledger.Dra
 	if err != nil {
 		return record.Verified{}, explain(err, dir)
 	}
-	fmt.Fprintf(cmd.OutOrStdout(), "signed      entry %s, number %d of your line\n", v.ID().Short(), v.Entry().Seq)
-	tellMoved(cmd.OutOrStdout(), b.Meaning(), verdict.Compare(before, b.Meaning()))
+	fmt.Fprintf(w, "signed      entry %s, number %d of your line\n", v.ID().Short(), v.Entry().Seq)
+	tellMoved(w, b.Meaning(), verdict.Compare(before, b.Meaning()))
 	return v, nil
+}
+
+// with opens the book, gives bare numbers its units, and closes it after f.
+func (h *home) with(cmd *cobra.Command, f func(b *ledger.Book, dir string) error) (err error) {
+	b, dir, err := h.open()
+	if err != nil {
+		return err
+	}
+	defer func() { err = errors.Join(err, b.Close()) }()
+	if err := giveUnits(cmd, b.Meaning().Founding); err != nil {
+		return err
+	}
+	return f(b, dir)
 }
 
 // signing makes a command that signs one entry: body makes it from the flags.
 func signing(cmd *cobra.Command, h *home, kind record.Kind, body func(*ledger.Meaning, []string) (any, error)) *cobra.Command {
 	addHome(cmd, h, true)
-	cmd.RunE = func(cmd *cobra.Command, args []string) (err error) {
-		b, dir, err := h.open()
-		if err != nil {
+	cmd.RunE = func(cmd *cobra.Command, args []string) error {
+		return h.with(cmd, func(b *ledger.Book, dir string) error {
+			x, err := body(b.Meaning(), args)
+			if err != nil {
+				return err
+			}
+			_, err = h.sign(cmd, cmd.OutOrStdout(), b, dir, ledger.Draft{Kind: kind, Body: x})
 			return err
-		}
-		defer func() { err = errors.Join(err, b.Close()) }()
-		x, err := body(b.Meaning(), args)
-		if err != nil {
-			return err
-		}
-		_, err = h.sign(cmd, b, dir, ledger.Draft{Kind: kind, Body: x})
-		return err
+		})
 	}
 	return cmd
 }
@@ -214,6 +234,11 @@ func (s *stamp) record() record.Time {
 	return record.Time{Unix: t.Unix(), OffsetMin: off / 60}
 }
 
-func clock(t record.Time) string {
-	return time.Unix(t.Unix, 0).In(time.FixedZone("", t.OffsetMin*60)).Format("2006-01-02T15:04Z07:00")
+// wall is the hour on the wall of whoever wrote it down.
+func wall(t record.Time) time.Time {
+	return time.Unix(t.Unix, 0).In(time.FixedZone("", t.OffsetMin*60))
 }
+
+func clock(t record.Time) string { return wall(t).Format("2006-01-02T15:04Z07:00") }
+
+func day(t record.Time) string { return wall(t).Format(time.DateOnly) }

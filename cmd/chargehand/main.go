@@ -6,6 +6,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"io/fs"
 	"os"
 	"os/signal"
 	"strings"
@@ -52,7 +53,7 @@ func run(ctx context.Context, args []string, s streams) int {
 		fmt.Fprintln(s.err, "chargehand:", p)
 		return p.status
 	default:
-		fmt.Fprintln(s.err, "chargehand:", couldNot(err, "Put right what is named there and try again"))
+		fmt.Fprintln(s.err, "chargehand:", couldNot(plainly(err), "Put right what is named there and try again"))
 		return statusNot
 	}
 }
@@ -72,22 +73,24 @@ func newRoot() *cobra.Command {
 		RunE: func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
 	}
 	root.SetFlagErrorFunc(flagError)
-	root.AddCommand(
-		newBook(),
-		newHand(),
-		newSheet(),
-		newUnit(),
-		newGauge(),
-		newCheck(),
-		newCountersign(),
-		newWithdraw(),
-		newBoard(),
-		newMeet(),
-		newAudit(),
-		newConvert(),
-		newProve(),
-		newVersion(),
-	)
+	for _, g := range []struct {
+		title    string
+		commands []*cobra.Command
+	}{
+		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newBoard()}},
+		{"What was signed", []*cobra.Command{newCountersign(), newCorrect(), newWithdraw(), newAudit()}},
+		{"The book and its laptops", []*cobra.Command{newBook(), newHand(), newMeet()}},
+		{"Equipment", []*cobra.Command{newUnit(), newGauge(), newSheet(), newBottle()}},
+		{"Without a book", []*cobra.Command{newConvert(), newProve(), newRehearse(), newVersion()}},
+	} {
+		root.AddGroup(&cobra.Group{ID: g.title, Title: g.title + ":"})
+		for _, c := range g.commands {
+			c.GroupID = g.title
+			root.AddCommand(c)
+		}
+	}
+	root.SetHelpCommandGroupID("Without a book")
+	root.SetCompletionCommandGroupID("Without a book")
 	return root
 }
 
@@ -103,6 +106,20 @@ type problem struct {
 
 func (p *problem) Error() string { return p.what + ". " + p.todo + "." }
 func (p *problem) Unwrap() error { return p.cause }
+
+// plainly says an error of the file system in words: which file, and what it said of it.
+func plainly(err error) error {
+	var p *fs.PathError
+	switch {
+	case !errors.As(err, &p):
+		return err
+	case errors.Is(err, fs.ErrNotExist):
+		return fmt.Errorf("there is no file or folder %q", p.Path)
+	case errors.Is(err, fs.ErrPermission), errors.Is(err, syscall.EROFS):
+		return fmt.Errorf("%q may not be read or written: %w", p.Path, p.Err)
+	}
+	return fmt.Errorf("%q: %w", p.Path, p.Err)
+}
 
 // usageError is a wrong command, flag or value.
 func usageError(what, todo string) error {
@@ -140,14 +157,4 @@ func flagError(cmd *cobra.Command, err error) error {
 		return usageError(fmt.Sprintf("--%s: %s", invalid.GetFlag().Name, v.what), v.todo)
 	}
 	return usageError(fmt.Sprintf("--%s: %q is not a value for it", invalid.GetFlag().Name, invalid.GetValue()), see)
-}
-
-// requireFlags names the first missing flag.
-func requireFlags(cmd *cobra.Command, names ...string) error {
-	for _, name := range names {
-		if f := cmd.Flags().Lookup(name); !f.Changed {
-			return usageError(fmt.Sprintf("--%s is missing", name), fmt.Sprintf("Give it: --%s %s, %s", name, f.Value.Type(), f.Usage))
-		}
-	}
-	return nil
 }

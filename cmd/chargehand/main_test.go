@@ -3,6 +3,7 @@ package main
 import (
 	"bytes"
 	"errors"
+	"maps"
 	"os"
 	"os/exec"
 	"regexp"
@@ -19,14 +20,13 @@ func TestMain(m *testing.M) {
 }
 
 func TestScripts(t *testing.T) {
+	cmds := map[string]func(*testscript.TestScript, bool, []string){"status": status, "waitfor": waitFor}
+	maps.Copy(cmds, tampering)
 	testscript.Run(t, testscript.Params{
 		Dir:                 "testdata/script",
 		RequireExplicitExec: true,
 		RequireUniqueNames:  true,
-		Cmds: map[string]func(*testscript.TestScript, bool, []string){
-			"status":  status,
-			"waitfor": waitFor,
-		},
+		Cmds:                cmds,
 	})
 }
 

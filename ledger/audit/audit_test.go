@@ -75,7 +75,7 @@ func sentences(r audit.Report) string {
 
 func TestCleanBook(t *testing.T) {
 	b, _ := history(t, t.TempDir())
-	if r := audit.Run(b.Meaning(), nil, nil); len(r.Findings) != 0 || r.Verdicts != 2 || r.Entries != 7 {
+	if r := audit.Run(b.Meaning(), nil, audit.Outside{}); len(r.Findings) != 0 || r.Verdicts != 2 || r.Entries != 7 {
 		t.Errorf("%d entries, %d verdicts, found:\n%s", r.Entries, r.Verdicts, sentences(r))
 	}
 }
@@ -105,18 +105,18 @@ func TestWhatAnAuditFinds(t *testing.T) {
 		entries []record.Verified
 		want    string
 	}{
-		"an entry removed from the middle": {slices.Delete(slices.Clone(vs), 3, 4), "proof: it builds on entry " + vs[3].ID().Short() + ", which is missing"},
-		"a stranger's key":                 {with(stranger), "proof: the reading is set aside: nobody whom it had seen admitted its key"},
-		"an entry re-dated":                {with(redated), "proof: the reading is set aside: its line is forked at number 2"},
-		"signed before what it has seen":   {with(backdated), "rule: its clock contradicts its past"},
-		"the founding entry removed":       {vs[1:], "proof: the founding entry is missing"},
+		"an entry removed from the middle": {slices.Delete(slices.Clone(vs), 3, 4), "fault: it builds on entry " + vs[3].ID().Short() + ", which is missing"},
+		"a stranger's key":                 {with(stranger), "fault: the reading is set aside: nobody whom it had seen admitted its key"},
+		"an entry re-dated":                {with(redated), "fault: the reading is set aside: its line is forked at number 2"},
+		"signed before what it has seen":   {with(backdated), "warning: its clock contradicts its past"},
+		"the founding entry removed":       {vs[1:], "fault: the founding entry is missing"},
 	} {
-		if r := audit.Run(ledger.Fold(b.ID(), c.entries), nil, nil); !strings.Contains(sentences(r), c.want) {
+		if r := audit.Run(ledger.Fold(b.ID(), c.entries), nil, audit.Outside{}); !strings.Contains(sentences(r), c.want) {
 			t.Errorf("%s: want %q in\n%s", name, c.want, sentences(r))
 		}
 	}
 	other := record.BookID{1}
-	if r := audit.Run(b.Meaning(), nil, &other); !strings.Contains(sentences(r), "another book") {
+	if r := audit.Run(b.Meaning(), nil, audit.Outside{Founding: &other}); !strings.Contains(sentences(r), "another book") {
 		t.Errorf("another founding fingerprint: %s", sentences(r))
 	}
 }
@@ -127,7 +127,7 @@ func TestRetiredKey(t *testing.T) {
 	if _, err := b.Author(key("lead"), ledger.Draft{Kind: record.KindKeyRetired, Body: record.KeyRetired{Key: id(key("tech")), LastSeq: 1, LastID: first.ID(), Reason: "laptop lost"}}); err != nil {
 		t.Fatal(err)
 	}
-	r := audit.Run(b.Meaning(), nil, nil)
+	r := audit.Run(b.Meaning(), nil, audit.Outside{})
 	if len(r.Findings) != 1 || r.Findings[0].Entry != vs[6].ID() || !strings.Contains(sentences(r), "retired after number 1") {
 		t.Errorf("found:\n%s", sentences(r))
 	}
@@ -145,8 +145,8 @@ func TestVerdictMovedSinceItWasShown(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	r := audit.Run(b.Meaning(), nil, nil)
-	want := `its signer was shown "pass"; the verdict is now "fail" because of entry ` + s.ID().Short()
+	r := audit.Run(b.Meaning(), nil, audit.Outside{})
+	want := `its signer was shown "pass", rightly by what the book held then; the verdict is now "fail" because of entry ` + s.ID().Short()
 	if len(r.Findings) != 1 || r.Findings[0].Entry != v.ID() || r.Findings[0].Sentence != want {
 		t.Errorf("found:\n%s\nwant %s", sentences(r), want)
 	}

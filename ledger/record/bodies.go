@@ -22,6 +22,11 @@ const (
 	KindCorrection     Kind = "correction"
 	KindWithdrawal     Kind = "withdrawal"
 	KindCountersign    Kind = "countersign"
+	KindBottle         Kind = "bottle"
+	KindSettling       Kind = "settling"
+	KindHold           Kind = "hold"
+	KindTrace          Kind = "trace"
+	KindRecall         Kind = "recall"
 )
 
 // Role is what a hand may do.
@@ -245,6 +250,69 @@ type Countersign struct {
 	Of      []ID   `cbor:"1,keyasint"`
 	Meaning string `cbor:"2,keyasint"` // "inspected", "approved" or as the book's procedures say
 	Note    string `cbor:"3,keyasint,omitempty"`
+}
+
+// Bottle is a gas bottle on the cart and what it held when it was last read; a later entry of the name replaces an earlier one.
+type Bottle struct {
+	Name        string  `cbor:"1,keyasint"`
+	Volume      Amount  `cbor:"2,keyasint"` // of water
+	Gas         string  `cbor:"3,keyasint"`
+	Pressure    Amount  `cbor:"4,keyasint"`
+	Temperature Amount  `cbor:"5,keyasint"`
+	Read        Time    `cbor:"6,keyasint"`
+	Rating      *Amount `cbor:"7,keyasint,omitempty"`
+	Label       string  `cbor:"8,keyasint,omitempty"` // the label's words, never a colour
+	Note        string  `cbor:"9,keyasint,omitempty"`
+}
+
+// Series is a row of values as they were typed: each of Values x 10^Exponent Unit.
+type Series struct {
+	_        struct{} `cbor:",toarray"`
+	Exponent int
+	Unit     string
+	Values   []int64
+}
+
+// Settling holds timed readings while a charge settles: seconds since the valve was closed, and the dial at each.
+type Settling struct {
+	Unit        UnitRef `cbor:"1,keyasint"`
+	Gauge       string  `cbor:"2,keyasint"`
+	Closed      Time    `cbor:"3,keyasint"` // when the valve was closed
+	Seconds     Series  `cbor:"4,keyasint"` // unit "s"
+	Pressures   Series  `cbor:"5,keyasint"`
+	Surrounding *Amount `cbor:"6,keyasint,omitempty"` // temperature around the unit
+	Note        string  `cbor:"7,keyasint,omitempty"`
+}
+
+// Hold is a pressure-hold test: two readings of one unit by one gauge, and the fall that is allowed.
+type Hold struct {
+	Start    ID     `cbor:"1,keyasint"`
+	End      ID     `cbor:"2,keyasint"`
+	Limit    Amount `cbor:"3,keyasint"` // of pressure, corrected, over the whole test
+	Document string `cbor:"4,keyasint"` // which gives the limit
+	Note     string `cbor:"5,keyasint,omitempty"`
+}
+
+// Trace is a bleed-down on the fluid side: what was drawn (volume, strokes or seconds) and the pressure at each.
+type Trace struct {
+	Unit        UnitRef `cbor:"1,keyasint"`
+	Gauge       string  `cbor:"2,keyasint"` // on the fluid side
+	Drawn       Series  `cbor:"3,keyasint"` // unit "strokes", "s" or a volume
+	Pressures   Series  `cbor:"4,keyasint"`
+	Temperature Amount  `cbor:"5,keyasint"`
+	From        string  `cbor:"6,keyasint"` // "shell", "ambient" or "unknown"
+	Done        Time    `cbor:"7,keyasint"`
+	Note        string  `cbor:"8,keyasint,omitempty"`
+}
+
+// Recall says that a gauge or a sheet was found wrong: for what was done since a time it no longer counts. With a Correction
+// a gauge's readings since then count with that added. Nothing new may be signed with it until it is entered again.
+type Recall struct {
+	Gauge      string  `cbor:"1,keyasint,omitempty"` // one of the two
+	Sheet      ID      `cbor:"2,keyasint,omitzero"`
+	Since      Time    `cbor:"3,keyasint"`
+	Correction *Amount `cbor:"4,keyasint,omitempty"`
+	Reason     string  `cbor:"5,keyasint"`
 }
 
 // Unknown is the body of a kind that this version does not know: verified, kept and forwarded unread.

@@ -95,6 +95,11 @@ var newBody = map[Kind]func() any{
 	KindCorrection:     func() any { return new(Correction) },
 	KindWithdrawal:     func() any { return new(Withdrawal) },
 	KindCountersign:    func() any { return new(Countersign) },
+	KindBottle:         func() any { return new(Bottle) },
+	KindSettling:       func() any { return new(Settling) },
+	KindHold:           func() any { return new(Hold) },
+	KindTrace:          func() any { return new(Trace) },
+	KindRecall:         func() any { return new(Recall) },
 }
 
 func malformed(format string, args ...any) error {
@@ -128,6 +133,29 @@ func (a Amount) check(name string) error {
 	return checkText("the unit of "+name, a.Unit, true)
 }
 
+// maxSeries keeps a series well inside an entry.
+const maxSeries = 500
+
+func (s Series) check(name string) error {
+	if len(s.Values) < 2 || len(s.Values) > maxSeries {
+		return malformed("%s has %d values; 2 to %d", name, len(s.Values), maxSeries)
+	}
+	return Amount{Exponent: s.Exponent, Unit: s.Unit}.check(name)
+}
+
+// checkPairs holds two series to one length, and the first to rising values.
+func checkPairs(x, y Series) error {
+	if len(x.Values) != len(y.Values) {
+		return malformed("%d values beside %d", len(x.Values), len(y.Values))
+	}
+	for i := 1; i < len(x.Values); i++ {
+		if x.Values[i] <= x.Values[i-1] {
+			return malformed("value %d of the series is not after the one before it", i+1)
+		}
+	}
+	return nil
+}
+
 func (t Time) check() error {
 	if t.OffsetMin < -maxOffset || t.OffsetMin > maxOffset || t.Unix < 0 || t.Unix > maxUnix {
 		return malformed("the time %d with offset %d min cannot be", t.Unix, t.OffsetMin)
@@ -142,7 +170,7 @@ const maxSoak = 100_000
 var optionalID = []string{"LastID", "Sheet"}
 
 // optionalText are the text fields that may be empty; all others must say something.
-var optionalText = []string{"Certificate", "Note", "Override", "Construction", "Valve", "Torque"}
+var optionalText = []string{"Certificate", "Note", "Override", "Construction", "Valve", "Torque", "Label"}
 
 // checkBody walks a body's fields: texts, amounts and times have one rule each wherever they stand. What is left is special.
 func checkBody(body any) error {
@@ -189,6 +217,21 @@ func checkBody(body any) error {
 				return malformed("it countersigns %s twice, or nothing", id.Short())
 			}
 		}
+	case Settling:
+		return checkPairs(b.Seconds, b.Pressures)
+	case Trace:
+		return errors.Join(checkFrom(b.From), checkPairs(b.Drawn, b.Pressures))
+	case Hold:
+		if b.Start == b.End {
+			return malformed("a hold test that starts and ends with one reading")
+		}
+	case Recall:
+		if (b.Gauge == "") == (b.Sheet == ID{}) {
+			return malformed("a recall names a gauge or a sheet, one of the two")
+		}
+		if b.Gauge == "" && b.Correction != nil {
+			return malformed("a sheet has no correction; enter its right revision")
+		}
 	case Reading:
 		return checkFrom(b.TemperatureFrom)
 	case Charge:
@@ -227,11 +270,14 @@ func checkFields(v reflect.Value) error {
 		case Kind:
 			err = checkText(name, string(x), true)
 		case string:
-			err = checkText(name, x, !slices.Contains(optionalText, name))
+			_, recall := v.Interface().(Recall) // names one of two
+			err = checkText(name, x, !slices.Contains(optionalText, name) && !recall || name == "Reason")
 		case UnitRef:
 			err = errors.Join(checkText("part", x.Part, true), checkText("serial", x.Serial, true))
 		case Observation:
 			err = checkFields(f)
+		case Series:
+			err = x.check(name)
 		case []ChartRow:
 			for _, r := range x {
 				err = errors.Join(err, checkFields(reflect.ValueOf(r)))

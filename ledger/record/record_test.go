@@ -129,6 +129,7 @@ var (
 	amb  = Amount{Mantissa: 2992, Exponent: -2, Unit: "inHg"}
 	row  = ChartRow{Temperature: am(70, "F"), Low: am(950, "psi"), Charge: am(1000, "psi"), High: am(1050, "psi")}
 	psi  = am(1000, "psi")
+	cold = am(-4, "F")
 )
 
 func bodies(t testing.TB) map[Kind]any {
@@ -152,6 +153,11 @@ func bodies(t testing.TB) map[Kind]any {
 		KindCorrection:     Correction{Of: ID{7}, Kind: KindReading, Body: fixed, Reason: "misread"},
 		KindWithdrawal:     Withdrawal{Of: ID{7}, Reason: "wrong unit"},
 		KindCountersign:    Countersign{Of: []ID{{7}, {8}}, Meaning: "inspected"},
+		KindBottle:         Bottle{Name: "N2-3", Volume: am(50, "L"), Gas: "nitrogen", Pressure: am(2400, "psi"), Temperature: am(41, "F"), Read: when, Label: "nitrogen, technical"},
+		KindSettling:       Settling{Unit: unit, Gauge: "G-7", Closed: when, Seconds: Series{Unit: "s", Values: []int64{30, 90}}, Pressures: Series{Exponent: -1, Unit: "psi", Values: []int64{12000, 11905}}, Surrounding: &cold},
+		KindHold:           Hold{Start: ID{7}, End: ID{8}, Limit: am(20, "psi"), Document: "CM-29"},
+		KindTrace:          Trace{Unit: unit, Gauge: "G-9", Drawn: Series{Unit: "strokes", Values: []int64{0, 1, 2}}, Pressures: Series{Unit: "psi", Values: []int64{3000, 2000, 0}}, Temperature: am(41, "F"), From: "shell", Done: when},
+		KindRecall:         Recall{Gauge: "G-7", Since: when, Reason: "15 psi high at calibration"},
 	}
 }
 
@@ -519,6 +525,19 @@ func TestBadBodiesAreRefused(t *testing.T) {
 		"corrected body broken": {KindCorrection, Correction{Of: ID{1}, Kind: KindReading, Body: []byte{0xa0}, Reason: "x"}},
 		"corrects a correction": {KindCorrection, Correction{Of: ID{1}, Kind: KindCorrection, Body: []byte{0xa0}, Reason: "x"}},
 		"a float in correction": {KindCorrection, Correction{Of: ID{1}, Kind: "hologram", Body: []byte{0xa1, 1, 0xf9, 0x3c, 0}, Reason: "x"}},
+		"one value":             {KindTrace, func() any { b := good[KindTrace].(Trace); b.Drawn.Values = b.Drawn.Values[:1]; return b }()},
+		"falling seconds":       {KindSettling, func() any { b := good[KindSettling].(Settling); b.Seconds.Values = []int64{90, 30}; return b }()},
+		"unlike lengths":        {KindSettling, func() any { b := good[KindSettling].(Settling); b.Seconds.Values = []int64{1, 2, 3}; return b }()},
+		"endless series":        {KindTrace, func() any { b := good[KindTrace].(Trace); b.Drawn.Values = make([]int64, maxSeries+1); return b }()},
+		"series of no unit":     {KindTrace, func() any { b := good[KindTrace].(Trace); b.Pressures.Unit = ""; return b }()},
+		"trace from air":        {KindTrace, func() any { b := good[KindTrace].(Trace); b.From = "air"; return b }()},
+		"hold of one reading":   {KindHold, Hold{Start: ID{1}, End: ID{1}, Limit: psi, Document: "x"}},
+		"hold of nothing":       {KindHold, Hold{Start: ID{1}, Limit: psi, Document: "x"}},
+		"recalls nothing":       {KindRecall, Recall{Since: when, Reason: "x"}},
+		"recalls two":           {KindRecall, Recall{Gauge: "G-7", Sheet: ID{1}, Since: when, Reason: "x"}},
+		"recall of no reason":   {KindRecall, Recall{Gauge: "G-7", Since: when}},
+		"a corrected sheet":     {KindRecall, Recall{Sheet: ID{1}, Since: when, Correction: &psi, Reason: "x"}},
+		"bottle of no gas":      {KindBottle, func() any { b := good[KindBottle].(Bottle); b.Gas = ""; return b }()},
 		"kind of control":       {"a\nb", Unknown{[]byte{0xa0}}},
 		"no body":               {KindReading, nil},
 		"body by pointer":       {KindReading, &reading},

@@ -30,39 +30,29 @@ func Judge(m *ledger.Meaning, id record.ID, body any) (Judged, error) {
 	var o observation
 	switch b := body.(type) {
 	case record.Reading:
-		o = observation{b.Unit, b.Gauge, b.Pressure, b.Temperature, b.TemperatureFrom, b.SoakMin, b.Ambient, b.Relieved, b.FluidPressure, b.Done}
+		o = ofReading(b)
 	case record.Charge:
-		o = observation{b.Unit, b.Gauge, b.AsLeft.Pressure, b.AsLeft.Temperature, b.AsLeft.TemperatureFrom, b.AsLeft.SoakMin, b.Ambient, b.Relieved, b.FluidPressure, b.Done}
+		o = ofCharge(b, b.AsLeft)
 	default:
 		return Judged{}, fmt.Errorf("a %T has no verdict", body)
 	}
-	j := Judged{Entry: id, Unit: o.unit, Sheet: m.SheetAt(o.unit.Part, o.done)}
-	if j.Sheet == nil {
-		j.Verdict = notAssessable(fmt.Sprintf("no sheet for part %s was in force at the time of the work", o.unit.Part))
-		return j, nil
-	}
-	limits, err := Limits(j.Sheet.Sheet)
-	if err != nil {
-		j.Verdict = notAssessable(fmt.Sprintf("sheet %s rev %s cannot be used: %v", j.Sheet.Document, j.Sheet.Revision, err))
-		return j, nil
-	}
-	g := m.Gauge(o.gauge)
-	if g == nil {
-		j.Verdict = notAssessable(fmt.Sprintf("gauge %s is not registered", o.gauge))
-		return j, nil
-	}
-	gauge, err := gaugeOf(g.Gauge, o.done)
-	if err != nil {
-		j.Verdict = notAssessable(fmt.Sprintf("gauge %s cannot be used: %v", o.gauge, err))
-		return j, nil
-	}
-	r, err := o.reading()
+	var x Observed
+	err := x.resolve(m, o)
+	j := Judged{Entry: id, Unit: o.unit, Sheet: x.Sheet}
 	if err != nil {
 		j.Verdict = notAssessable(err.Error())
-		return j, nil
+	} else {
+		j.Verdict = calc.Judge(x.Limits, x.Gauge, x.Reading, calc.GuardBanded())
 	}
-	j.Verdict = calc.Judge(limits, gauge, r, calc.GuardBanded())
 	return j, nil
+}
+
+func ofReading(b record.Reading) observation {
+	return observation{b.Unit, b.Gauge, b.Pressure, b.Temperature, b.TemperatureFrom, b.SoakMin, b.Ambient, b.Relieved, b.FluidPressure, b.Done}
+}
+
+func ofCharge(b record.Charge, o record.Observation) observation {
+	return observation{b.Unit, b.Gauge, o.Pressure, o.Temperature, o.TemperatureFrom, o.SoakMin, b.Ambient, b.Relieved, b.FluidPressure, b.Done}
 }
 
 func notAssessable(reason string) calc.Verdict {
@@ -105,14 +95,19 @@ func (o observation) reading() (calc.Reading, error) {
 	return r, p.err
 }
 
-// Limits returns the approved data of a sheet as the core takes them.
-func Limits(s record.Sheet) (calc.Limits, error) {
+// UnitsOf returns the book's own units, which the words of its verdicts use.
+func UnitsOf(m *ledger.Meaning) calc.Units {
+	return calc.Units{P: m.Founding.PressureUnit, T: m.Founding.TemperatureUnit}
+}
+
+// Limits returns the approved data of a sheet as the core takes them; in is for the words.
+func Limits(s record.Sheet, in calc.Units) (calc.Limits, error) {
 	var p parser
 	model, err := gas.ByName(s.Gas)
 	if err != nil {
 		return calc.Limits{}, err
 	}
-	l := calc.Limits{Gas: model, Ambient: quantity.StandardAtmosphere, Reference: p.temperature("reference temperature", s.ReferenceTemperature)}
+	l := calc.Limits{In: in, Gas: model, Ambient: quantity.StandardAtmosphere, Reference: p.temperature("reference temperature", s.ReferenceTemperature)}
 	if s.Ambient != nil {
 		l.Ambient = p.absolute("reference ambient pressure", *s.Ambient)
 	}
@@ -141,7 +136,7 @@ func Limits(s record.Sheet) (calc.Limits, error) {
 		if p.err != nil {
 			return calc.Limits{}, p.err
 		}
-		if l.Chart, err = calc.NewChart(rows); err != nil {
+		if l.Chart, err = calc.NewChart(in, rows); err != nil {
 			return calc.Limits{}, err
 		}
 	}

@@ -45,8 +45,17 @@ type Store struct{ db *badger.DB }
 
 // Open opens the store in dir, and makes it when it is not there. Errors: ErrBusy, ErrDamaged, ErrFull.
 func Open(dir string) (*Store, error) {
+	s, changed, err := open(dir, false)
+	return s, errors.Join(err, changed)
+}
+
+// Inspect opens a store to read it although its tables were changed since they were written, and says so in changed. What
+// Open cannot open at all Inspect cannot either.
+func Inspect(dir string) (s *Store, changed, err error) { return open(dir, true) }
+
+func open(dir string, inspect bool) (s *Store, changed, err error) {
 	if err := os.MkdirAll(dir, 0o700); err != nil {
-		return nil, translate(err)
+		return nil, nil, translate(err)
 	}
 	o := badger.DefaultOptions(dir).
 		WithLogger(nil).
@@ -64,11 +73,21 @@ func Open(dir string) (*Store, error) {
 		WithNumLevelZeroTables(2).
 		WithNumLevelZeroTablesStall(4).
 		WithCompression(options.Snappy)
+	if inspect {
+		o = o.WithNumCompactors(0) // which would write what was changed as if it had always been so
+	}
+	changed, err = sound(dir, o)
+	if err != nil || changed != nil { // or another process that holds the store changed its files between two reads
+		changed, err = sound(dir, o)
+	}
+	if err != nil || changed != nil && !inspect {
+		return nil, changed, translate(err)
+	}
 	db, err := badger.Open(o)
 	if err != nil {
-		return nil, translate(err)
+		return nil, changed, whole(translate(err))
 	}
-	return &Store{db}, nil
+	return &Store{db}, changed, nil
 }
 
 // Close syncs and closes the store, and gives back the space that Badger reserved ahead for its logs.
