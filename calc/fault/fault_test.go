@@ -141,6 +141,9 @@ func TestCausesAndTheirLookAlikes(t *testing.T) {
 		{"the dial does not go with the temperature", history(obs(t, 0, 1250, 70, shows(1250)), obs(t, 3, 1250, 40, shows(1250)), obs(t, 6, 1250, 10, shows(1250)), obs(t, 9, 1250, 60, shows(1250))), GaugeStuck, LeakOutside},
 		{"stands still at a steady temperature, low, bubbles", history(obs(t, 0, 1250, 70, left(3*time.Hour)), obs(t, 3, 1180, 70, shows(1180)), obs(t, 6, 1100, 70, shows(1105)), obs(t, 9, 1040, 70, shows(1040), with(BubblesAtValve))), LeakOutside, GaugeStuck},
 
+		{"leaked and just charged again", history(append(leak(), obs(t, 20.1, 1250, 75, left(5*time.Minute)))...), LeakOutside, HotReading},
+		{"charged every two weeks", history(obs(t, 0, 1250, 70, left(3*time.Hour)), obs(t, 14, 1170, 60), obs(t, 14.1, 1250, 60, left(2*time.Hour)), obs(t, 28, 1172, 64, with(BubblesAtValve))), LeakOutside, HotReading},
+
 		{"high as left at once, then steady", history(obs(t, 0, 1250, 70, off(70), left(5*time.Minute)), obs(t, 1, 1250, 68), obs(t, 4, 1249, 60), obs(t, 8, 1251, 66)), HotReading, LeakOutside},
 		{"one check after a hot charge", history(obs(t, 0, 1250, 70, off(60), left(5*time.Minute)), obs(t, 1, 1250, 60)), HotReading, LeakOutside},
 		{"left settled, then falling on", history(obs(t, 0, 1250, 70, left(3*time.Hour)), obs(t, 1, 1190, 68), obs(t, 4, 1140, 60), obs(t, 8, 1050, 66)), LeakOutside, HotReading},

@@ -74,7 +74,7 @@ func gather(h History) *evidence {
 	e.last = e.all[len(e.all)-1]
 	e.now = stretch(e.all, e.last.stretch)
 	if len(e.now) == 1 && e.now[0].Kind == ChargeLeft && e.last.Kind == ChargeLeft { // nothing read since: look at the stretch before
-		if before := stretch(e.all, e.last.stretch-1); len(before) > 1 && !hotCandidate(e.now[0]) {
+		if before := stretch(e.all, e.last.stretch-1); len(before) > 1 {
 			e.now = before
 		}
 	}
@@ -93,8 +93,6 @@ func gather(h History) *evidence {
 	}
 	return e
 }
-
-func hotCandidate(s seen) bool { return s.Reading.Soak < time.Hour }
 
 // follow makes a unit's usable observations ready, by time.
 func follow(unit string, l calc.Limits, obs []Observation) track {
