@@ -259,6 +259,23 @@ func (b *Book) Author(key ed25519.PrivateKey, d Draft) (record.Verified, error) 
 	return v, nil
 }
 
+// Views returns the derived views whose names begin with prefix. They are what some package computed from the entries and kept;
+// they may be missing, of another version, or of other entries, and are never trusted without a look at that.
+func (b *Book) Views(prefix string) (map[string][]byte, error) {
+	views := map[string][]byte{}
+	err := b.store.Views(prefix, func(name string, data []byte) error {
+		views[name] = slices.Clone(data)
+		return nil
+	})
+	return views, err
+}
+
+// SetViews replaces derived views, a view of no bytes by none; not all at once.
+func (b *Book) SetViews(views map[string][]byte) error { return b.store.SetViews(views) }
+
+// DropViews throws all derived views away; entries are not touched.
+func (b *Book) DropViews() error { return b.store.DropViews() }
+
 // recordTime keeps the offset, so that a reader sees the hour on the signer's wall.
 func recordTime(t time.Time) record.Time {
 	_, off := t.Zone()

@@ -19,9 +19,35 @@ type Meaning struct {
 	Sheets   []*Sheet  // by part, then from the earliest effective date
 	Bottles  []*Bottle // by name
 	Entries  []Item    // all entries held, in display order
+	Recalls  []*Recall // that stand, in display order
 	items    map[record.ID]int
 	set      *set
 	roster   *roster
+	named    names
+}
+
+// names is where units and gauges are named in the causal order: registrations, and for gauges recalls too.
+type names struct {
+	units  map[record.UnitRef][]*node
+	gauges map[string][]*node
+}
+
+func (s *set) names() names {
+	in := names{map[record.UnitRef][]*node{}, map[string][]*node{}}
+	for _, n := range s.order {
+		switch b := n.body.(type) {
+		case record.UnitRegistered:
+			ref := record.UnitRef{Part: b.Part, Serial: b.Serial}
+			in.units[ref] = append(in.units[ref], n)
+		case record.Gauge:
+			in.gauges[b.Asset] = append(in.gauges[b.Asset], n)
+		case record.Recall:
+			if b.Gauge != "" {
+				in.gauges[b.Gauge] = append(in.gauges[b.Gauge], n)
+			}
+		}
+	}
+	return in
 }
 
 // Item is one entry with its standing.
@@ -47,6 +73,9 @@ type Unit struct {
 	Aircraft string // where it is fitted, "" when it is not
 	Position string
 	Work     []record.ID // readings and charges in force, by the time the work was done
+	Settled  []record.ID // settling readings in force, in display order
+	Holds    []record.ID // hold tests in force
+	Traces   []record.ID // bleed-down traces in force
 }
 
 // Gauge is a pressure gauge as its newest entry describes it.
@@ -71,10 +100,12 @@ type Sheet struct {
 func Fold(book record.BookID, entries []record.Verified) *Meaning {
 	m := &Meaning{Book: book, set: newSet(entries), items: map[record.ID]int{}}
 	m.roster = settleRoster(m.set)
+	m.named = m.set.names()
 	m.stand()
 	m.amend()
 	m.people()
 	m.equipment()
+	m.recalls()
 	return m
 }
 
@@ -146,15 +177,17 @@ func (m *Meaning) refuse(n *node, it *Item, before map[record.ID]*Item, roles []
 		case b.Kind == record.KindSheet && !slices.Contains(roles, record.RoleLead):
 			return "only a lead may correct a sheet"
 		}
-		if _, err := record.DecodeBody(b.Kind, b.Body); err != nil {
+		body, err := record.DecodeBody(b.Kind, b.Body)
+		if err != nil {
 			return "the corrected body cannot be read: " + err.Error()
 		}
+		return m.namesKnown(n, body, before)
 	case record.Withdrawal:
 		t, why := target(b.Of)
 		switch {
 		case why != "":
 			return why
-		case !correctable(t.Entry().Kind) && t.Entry().Kind != record.KindCountersign:
+		case !correctable(t.Entry().Kind) && !withdrawable(t.Entry().Kind):
 			return fmt.Sprintf("a %s cannot be withdrawn", t.Entry().Kind)
 		case !ownOrLead(t):
 			return "only the hand who signed an entry, or a lead, may withdraw it"
@@ -169,47 +202,131 @@ func (m *Meaning) refuse(n *node, it *Item, before map[record.ID]*Item, roles []
 				return "nobody countersigns their own entry: the second signature must come from another person"
 			}
 		}
-	case record.Reading:
-		return m.knows(n, b.Unit, b.Gauge)
-	case record.Charge:
-		return m.knows(n, b.Unit, b.Gauge)
-	case record.UnitFitted:
-		return m.knows(n, b.Unit, "")
-	case record.UnitRemoved:
-		return m.knows(n, b.Unit, "")
+	case record.Recall:
+		if b.Sheet != (record.ID{}) {
+			t, why := target(b.Sheet)
+			if why == "" && t.Entry().Kind != record.KindSheet {
+				why = fmt.Sprintf("a %s is no sheet", t.Entry().Kind)
+			}
+			return why
+		}
+		return m.knowsGauge(n, b.Gauge, before)
+	case record.Hold:
+		return testsOne(target, b)
+	default:
+		return m.namesKnown(n, b, before)
 	}
 	return ""
 }
 
-// knows tells why a unit or gauge is not registered in n's causal past, "" when both are.
-func (m *Meaning) knows(n *node, unit record.UnitRef, gauge string) string {
-	haveUnit, haveGauge := false, gauge == ""
-	for _, o := range m.set.order {
-		if o == n {
-			break
+// namesKnown tells why the unit or the gauge that a body names cannot be meant, "" when the body names none or both are known.
+func (m *Meaning) namesKnown(n *node, body any, before map[record.ID]*Item) string {
+	switch b := body.(type) {
+	case record.Reading, record.Charge, record.Settling, record.Trace:
+		ref, gauge, done := Subject(b)
+		return m.knows(n, ref, gauge, done, before)
+	case record.UnitFitted:
+		return m.knows(n, b.Unit, "", b.When, before)
+	case record.UnitRemoved:
+		return m.knows(n, b.Unit, "", b.When, before)
+	}
+	return ""
+}
+
+// knowsGauge tells why a gauge is not registered in n's causal past.
+func (m *Meaning) knowsGauge(n *node, gauge string, before map[record.ID]*Item) string {
+	for _, o := range m.named.gauges[gauge] {
+		if _, ok := o.body.(record.Gauge); ok && n.hasSeen(o) && before[o.id] != nil && before[o.id].SetAside == "" {
+			return ""
+		}
+	}
+	return fmt.Sprintf("gauge %s is not registered", gauge)
+}
+
+// testsOne tells why two readings make no hold test: they must be readings of one unit by one gauge.
+func testsOne(target func(record.ID) (*Item, string), h record.Hold) string {
+	var of [2]record.Reading
+	for i, id := range []record.ID{h.Start, h.End} {
+		t, why := target(id)
+		if why != "" {
+			return why
+		}
+		r, ok := t.Entry().Body.(record.Reading)
+		if !ok {
+			return fmt.Sprintf("a hold test is of two readings, and entry %s is a %s", id.Short(), t.Entry().Kind)
+		}
+		of[i] = r
+	}
+	switch {
+	case of[0].Unit != of[1].Unit:
+		return "a hold test is of one unit, and its readings are of two"
+	case of[0].Gauge != of[1].Gauge:
+		return fmt.Sprintf("a hold test is read with one gauge, and its readings are by %s and %s", of[0].Gauge, of[1].Gauge)
+	}
+	return ""
+}
+
+// Subject returns the unit, the gauge and the time of the work of an entry that reports a pressure; zero for other bodies.
+func Subject(body any) (unit record.UnitRef, gauge string, done record.Time) {
+	switch b := body.(type) {
+	case record.Reading:
+		return b.Unit, b.Gauge, b.Done
+	case record.Charge:
+		return b.Unit, b.Gauge, b.Done
+	case record.Settling:
+		return b.Unit, b.Gauge, b.Closed
+	case record.Trace:
+		return b.Unit, b.Gauge, b.Done
+	}
+	return record.UnitRef{}, "", record.Time{}
+}
+
+// knows tells why a unit or gauge is not registered in n's causal past, or the gauge recalled there, "" when n may name both.
+func (m *Meaning) knows(n *node, unit record.UnitRef, gauge string, done record.Time, before map[record.ID]*Item) string {
+	stands := func(o *node) bool {
+		return o != n && n.hasSeen(o) && before[o.id] != nil && before[o.id].SetAside == ""
+	}
+	if !slices.ContainsFunc(m.named.units[unit], stands) {
+		return fmt.Sprintf("unit %s serial %s is not registered", unit.Part, unit.Serial)
+	}
+	if gauge == "" {
+		return ""
+	}
+	registered := false
+	var recalled record.ID
+	for _, o := range m.named.gauges[gauge] {
+		if !stands(o) {
+			continue
 		}
 		switch b := o.body.(type) {
-		case record.UnitRegistered:
-			haveUnit = haveUnit || (record.UnitRef{Part: b.Part, Serial: b.Serial} == unit && n.hasSeen(o) && m.roster.aside(o) == "")
 		case record.Gauge:
-			haveGauge = haveGauge || (b.Asset == gauge && n.hasSeen(o) && m.roster.aside(o) == "")
+			registered, recalled = true, record.ID{}
+		case record.Recall:
+			if b.Since.Unix <= done.Unix {
+				recalled = o.id
+			}
 		}
 	}
 	switch {
-	case !haveUnit:
-		return fmt.Sprintf("unit %s serial %s is not registered", unit.Part, unit.Serial)
-	case !haveGauge:
+	case !registered:
 		return fmt.Sprintf("gauge %s is not registered", gauge)
+	case recalled != record.ID{}:
+		return fmt.Sprintf("gauge %s was recalled by entry %s and not entered again since", gauge, recalled.Short())
 	}
 	return ""
 }
 
 func correctable(k record.Kind) bool {
 	switch k {
-	case record.KindReading, record.KindCharge, record.KindSheet, record.KindGauge, record.KindUnitFitted, record.KindUnitRemoved, record.KindBottle:
+	case record.KindReading, record.KindCharge, record.KindSheet, record.KindGauge, record.KindUnitFitted, record.KindUnitRemoved, record.KindBottle, record.KindSettling, record.KindTrace:
 		return true
 	}
 	return false
+}
+
+// withdrawable are the kinds that can be taken out of force but not corrected.
+func withdrawable(k record.Kind) bool {
+	return k == record.KindCountersign || k == record.KindHold || k == record.KindRecall
 }
 
 // lateAfter is the gap between work and signature from which an entry is marked late: a shift.
@@ -235,24 +352,18 @@ func flags(n *node, it *Item) []string {
 
 // Done returns the time of the work of a reading or charge.
 func Done(body any) (record.Time, bool) {
-	switch b := body.(type) {
-	case record.Reading:
-		return b.Done, true
-	case record.Charge:
-		return b.Done, true
+	switch body.(type) {
+	case record.Reading, record.Charge:
+		_, _, done := Subject(body)
+		return done, true
 	}
 	return record.Time{}, false
 }
 
-// GaugeOf returns the asset number of the gauge of a reading or charge, "" for other bodies.
+// GaugeOf returns the asset number of the gauge of an entry that reports a pressure, "" for other bodies.
 func GaugeOf(body any) string {
-	switch b := body.(type) {
-	case record.Reading:
-		return b.Gauge
-	case record.Charge:
-		return b.Gauge
-	}
-	return ""
+	_, gauge, _ := Subject(body)
+	return gauge
 }
 
 // amend applies corrections, withdrawals and countersigns in display order.
@@ -317,17 +428,19 @@ func (m *Meaning) people() {
 
 func (m *Meaning) equipment() {
 	units, gauges, bottles := map[record.UnitRef]*Unit{}, map[string]*Gauge{}, map[string]*Bottle{}
+	// Units first: a clock that lies can put an entry before the registration that it had seen.
+	for i := range m.Entries {
+		if b, ok := m.Entries[i].Body.(record.UnitRegistered); ok && m.Entries[i].Counts() {
+			ref := record.UnitRef{Part: b.Part, Serial: b.Serial}
+			units[ref] = &Unit{Ref: ref}
+		}
+	}
 	for i := range m.Entries {
 		it := &m.Entries[i]
 		if !it.Counts() {
 			continue
 		}
 		switch b := it.Body.(type) {
-		case record.UnitRegistered:
-			ref := record.UnitRef{Part: b.Part, Serial: b.Serial}
-			if units[ref] == nil {
-				units[ref] = &Unit{Ref: ref}
-			}
 		case record.UnitFitted:
 			units[b.Unit].Aircraft, units[b.Unit].Position = b.Aircraft, b.Position
 		case record.UnitRemoved:
@@ -342,6 +455,14 @@ func (m *Meaning) equipment() {
 			units[b.Unit].Work = append(units[b.Unit].Work, it.ID())
 		case record.Charge:
 			units[b.Unit].Work = append(units[b.Unit].Work, it.ID())
+		case record.Settling:
+			units[b.Unit].Settled = append(units[b.Unit].Settled, it.ID())
+		case record.Trace:
+			units[b.Unit].Traces = append(units[b.Unit].Traces, it.ID())
+		case record.Hold:
+			if r, ok := m.Item(b.Start).Body.(record.Reading); ok {
+				units[r.Unit].Holds = append(units[r.Unit].Holds, it.ID())
+			}
 		}
 	}
 	for _, u := range units {
@@ -418,13 +539,21 @@ func (m *Meaning) Gauge(asset string) *Gauge {
 }
 
 // SheetAt returns the sheet of a part in force at a time: the one of the latest effective date not after it, and of several
-// with one date the last in display order. nil when none is.
+// with one date the last in display order. A recalled one gives way to any that was entered by somebody who knew of the recall. nil
+// when none is in force.
 func (m *Meaning) SheetAt(part string, at record.Time) *Sheet {
 	var in *Sheet
 	for _, s := range m.Sheets {
-		if s.Part == part && s.Effective.Unix <= at.Unix {
-			in = s
+		if s.Part != part || s.Effective.Unix > at.Unix {
+			continue
 		}
+		if in != nil {
+			now, then := m.SheetRecall(s.ID, at), m.SheetRecall(in.ID, at)
+			if then == nil && now != nil && m.Saw(in.ID, now.ID) {
+				continue
+			}
+		}
+		in = s
 	}
 	return in
 }

@@ -17,7 +17,7 @@ import (
 )
 
 func newBook() *cobra.Command {
-	return group("book", "Start a book, join one, show or copy this one", newBookStart(), newBookJoin(), newBookShow(), newBookCopy())
+	return group("book", "Start a book, join one, show or copy this one", newBookStart(), newBookJoin(), newBookShow(), newBookCopy(), newBookRebuild())
 }
 
 func newBookStart() *cobra.Command {

@@ -151,14 +151,25 @@ func (h *home) sign(cmd *cobra.Command, w io.Writer, b *ledger.Book, dir string,
 	if err != nil {
 		return record.Verified{}, err
 	}
-	before := b.Meaning()
+	if err := tellRefreshed(w, b, dir); err != nil { // what moved before this entry is not this entry's doing
+		return record.Verified{}, err
+	}
 	v, err := b.Author(key, d)
 	if err != nil {
 		return record.Verified{}, explain(err, dir)
 	}
 	fmt.Fprintf(w, "signed      entry %s, number %d of your line\n", v.ID().Short(), v.Entry().Seq)
-	tellMoved(w, b.Meaning(), verdict.Compare(before, b.Meaning()))
-	return v, nil
+	return v, tellRefreshed(w, b, dir)
+}
+
+// tellRefreshed brings the kept verdicts up to date and tells which moved since this laptop last computed them.
+func tellRefreshed(w io.Writer, b *ledger.Book, dir string) error {
+	r, err := verdict.Refresh(b)
+	if err != nil {
+		return explain(err, dir)
+	}
+	tellMoved(w, b.Meaning(), r.Moved)
+	return nil
 }
 
 // with opens the book, gives bare numbers its units, and closes it after f.

@@ -167,11 +167,13 @@ func (t *table) talk(ctx context.Context, who record.KeyID, rw io.ReadWriteClose
 
 // converse merges with one peer and tells what that did: the one path of every meeting.
 func converse(ctx context.Context, out io.Writer, b *ledger.Book, who record.KeyID, rw io.ReadWriteCloser) error {
+	if err := tellRefreshed(out, b, ""); err != nil {
+		return err
+	}
 	before := b.Meaning()
 	r, err := (&peersync.Session{Book: b}).Run(ctx, rw)
-	after := b.Meaning()
-	fmt.Fprintf(out, "met         %s\n", handName(after, who))
-	tellMerge(out, before, after, r)
+	fmt.Fprintf(out, "met         %s\n", handName(b.Meaning(), who))
+	err = errors.Join(err, tellMerge(out, before, b, r))
 	if err != nil {
 		return couldNot(fmt.Errorf("the meeting was cut short: %w", err), "Meet again; what had arrived is kept and the rest follows")
 	}
@@ -188,7 +190,8 @@ func handName(m *ledger.Meaning, key record.KeyID) string {
 	return "key " + key.Short()
 }
 
-func tellMerge(out io.Writer, before, after *ledger.Meaning, r peersync.Report) {
+func tellMerge(out io.Writer, before *ledger.Meaning, b *ledger.Book, r peersync.Report) error {
+	after := b.Meaning()
 	count := func(word string, by map[record.KeyID]int) {
 		if len(by) == 0 {
 			fmt.Fprintf(out, "%-11s nothing\n", word)
@@ -209,7 +212,11 @@ func tellMerge(out io.Writer, before, after *ledger.Meaning, r peersync.Report) 
 			fmt.Fprintf(out, "set aside   %s %s: %s\n", it.Entry().Kind, it.ID().Short(), it.SetAside)
 		}
 	}
-	moved := verdict.Compare(before, after)
+	now, err := verdict.Refresh(b)
+	if err != nil {
+		return explain(err, "")
+	}
+	moved := now.Moved
 	told := map[record.ID]bool{}
 	for _, m := range moved {
 		told[m.Entry] = true
@@ -226,12 +233,17 @@ func tellMerge(out io.Writer, before, after *ledger.Meaning, r peersync.Report) 
 		same = "the other laptop's differs: " + grouped(r.PeerFingerprint[:8])
 	}
 	fmt.Fprintf(out, "fingerprint %s (%s)\n", grouped(fp[:8]), same)
+	return nil
 }
 
 // tellMoved says of each verdict that moved what it was, what it is, and which entry moved it.
 func tellMoved(out io.Writer, m *ledger.Meaning, moved []verdict.Moved) {
 	for _, v := range moved {
-		fmt.Fprintf(out, "moved       %s, entry %s: %s, now %s%s\n            %s\n", unitName(v.Unit), v.Entry.Short(), v.Was, v.Now, because(m, v.Cause), v.Sentence)
+		change := fmt.Sprintf("%s, now %s", v.Was, v.Now)
+		if v.Was == v.Now {
+			change = fmt.Sprintf("still %s, by other figures", v.Now)
+		}
+		fmt.Fprintf(out, "moved       %s, entry %s: %s%s\n            %s\n", unitName(v.Unit), v.Entry.Short(), change, because(m, v.Cause), v.Sentence)
 	}
 }
 

@@ -58,6 +58,9 @@ func (x *Observed) resolve(m *ledger.Meaning, o observation) (err error) {
 	if x.Sheet = m.SheetAt(o.unit.Part, o.done); x.Sheet == nil {
 		return fmt.Errorf("no sheet for part %s was in force at the time of the work", o.unit.Part)
 	}
+	if r := m.SheetRecall(x.Sheet.ID, o.done); r != nil {
+		return fmt.Errorf("sheet %s rev %s was recalled: %s", x.Sheet.Document, x.Sheet.Revision, r.Reason)
+	}
 	if x.Limits, err = Limits(x.Sheet.Sheet, UnitsOf(m)); err != nil {
 		return fmt.Errorf("sheet %s rev %s cannot be used: %v", x.Sheet.Document, x.Sheet.Revision, err)
 	}
@@ -68,6 +71,16 @@ func (x *Observed) resolve(m *ledger.Meaning, o observation) (err error) {
 	if x.Gauge, err = gaugeOf(g.Gauge, o.done); err != nil {
 		return fmt.Errorf("gauge %s cannot be used: %v", o.gauge, err)
 	}
-	x.Reading, err = o.reading()
-	return err
+	if x.Reading, err = o.reading(); err != nil {
+		return err
+	}
+	if r := m.GaugeRecall(o.gauge, o.done); r != nil {
+		if r.Correction == nil {
+			return fmt.Errorf("gauge %s was recalled: %s", o.gauge, r.Reason)
+		}
+		var p parser
+		x.Reading.Gauge += p.gauge("correction of the recall", *r.Correction)
+		return p.err
+	}
+	return nil
 }

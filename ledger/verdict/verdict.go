@@ -174,6 +174,10 @@ func All(m *ledger.Meaning) map[record.ID]Judged {
 	for _, u := range m.Units {
 		ids = append(ids, u.Work...)
 	}
+	return judgeAll(m, ids)
+}
+
+func judgeAll(m *ledger.Meaning, ids []record.ID) map[record.ID]Judged {
 	out := make([]Judged, len(ids))
 	var wg sync.WaitGroup
 	workers := runtime.GOMAXPROCS(0)
@@ -199,26 +203,6 @@ type Moved struct {
 	Was, Now calc.Class
 	Sentence string
 	Cause    record.ID // the entry that moved it: a sheet, a gauge, or a correction or withdrawal; zero when it is none of these
-}
-
-// Compare says which verdicts moved between two meanings of one book, and by which entry, in the order of after.
-func Compare(before, after *ledger.Meaning) []Moved {
-	was, now := All(before), All(after)
-	var moved []Moved
-	for _, u := range after.Units {
-		for _, id := range u.Work {
-			w, ok := was[id]
-			n := now[id]
-			if !ok || w.Class == n.Class && w.Sheet != nil && n.Sheet != nil && w.Sheet.ID == n.Sheet.ID {
-				continue
-			}
-			if w.Class == n.Class && w.Corrected == n.Corrected && w.Low == n.Low && w.High == n.High {
-				continue
-			}
-			moved = append(moved, Moved{id, u.Ref, w.Class, n.Class, n.Sentence, cause(before, after, id, w, n)})
-		}
-	}
-	return moved
 }
 
 // AgainstShown says which entries of the set show another verdict today than their signer was shown, and by which entry: the
@@ -261,24 +245,6 @@ func bearing(m *ledger.Meaning, id record.ID, j Judged) []record.ID {
 		on = append(on, g.ID)
 	}
 	return on
-}
-
-func cause(before, after *ledger.Meaning, id record.ID, w, n Judged) record.ID {
-	for _, on := range append(bearing(before, id, w), bearing(after, id, n)...) {
-		b, a := before.Item(on), after.Item(on)
-		switch {
-		case b == nil:
-			return on
-		case len(a.CorrectedBy) > len(b.CorrectedBy):
-			return a.CorrectedBy[len(a.CorrectedBy)-1]
-		case a.WithdrawnBy != b.WithdrawnBy:
-			return a.WithdrawnBy
-		}
-	}
-	if n.Sheet != nil && (w.Sheet == nil || w.Sheet.ID != n.Sheet.ID) {
-		return n.Sheet.ID
-	}
-	return record.ID{}
 }
 
 // parser keeps the first error of several conversions, so that a body can be converted field by field.

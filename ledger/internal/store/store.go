@@ -214,26 +214,38 @@ func (s *Store) walk(prefix, start []byte, f func([]byte) error) error {
 	}))
 }
 
-// View returns a derived view's bytes, nil when there is none.
-func (s *Store) View(name string) ([]byte, error) {
-	var out []byte
-	err := s.db.View(func(t *badger.Txn) error {
-		item, err := t.Get([]byte("v" + name))
-		if err != nil {
-			return err
+// Views calls f with each derived view whose name begins with prefix. The slice is f's only during the call.
+func (s *Store) Views(prefix string, f func(name string, data []byte) error) error {
+	return translate(s.db.View(func(t *badger.Txn) error {
+		it := t.NewIterator(badger.IteratorOptions{Prefix: []byte("v" + prefix), PrefetchValues: true, PrefetchSize: 100})
+		defer it.Close()
+		for it.Rewind(); it.Valid(); it.Next() {
+			name := string(it.Item().Key()[1:])
+			if err := it.Item().Value(func(data []byte) error { return f(name, data) }); err != nil {
+				return err
+			}
 		}
-		out, err = item.ValueCopy(nil)
-		return err
-	})
-	if errors.Is(err, badger.ErrKeyNotFound) {
-		return nil, nil
-	}
-	return out, translate(err)
+		return nil
+	}))
 }
 
-// SetView replaces a derived view.
-func (s *Store) SetView(name string, data []byte) error {
-	return translate(s.db.Update(func(t *badger.Txn) error { return t.Set([]byte("v"+name), data) }))
+// SetViews replaces derived views, a view of no bytes by none. Not all at once: whoever needs to know that all are there writes a
+// last one that says so.
+func (s *Store) SetViews(views map[string][]byte) error {
+	w := s.db.NewWriteBatch()
+	defer w.Cancel()
+	for name, data := range views {
+		var err error
+		if len(data) == 0 {
+			err = w.Delete([]byte("v" + name))
+		} else {
+			err = w.Set([]byte("v"+name), data)
+		}
+		if err != nil {
+			return translate(err)
+		}
+	}
+	return translate(w.Flush())
 }
 
 // DropViews throws all derived views away. Entries are not touched.
