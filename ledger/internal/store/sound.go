@@ -123,6 +123,11 @@ func whole(err error) error {
 			return err
 		}
 	}
+	return damage(err)
+}
+
+// damage names the file that Badger stumbled over, where it does.
+func damage(err error) error {
 	if name := badgerFile.FindString(err.Error()); name != "" {
 		return unreadable(name)
 	}
