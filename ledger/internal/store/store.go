@@ -101,8 +101,8 @@ func (s *Store) Close() error { return translate(s.db.Close()) }
 // translate is the one place that knows Badger's errors.
 func translate(err error) error {
 	switch {
-	case err == nil:
-		return nil
+	case err == nil || errors.Is(err, ErrDamaged) || errors.Is(err, ErrFull): // said by sound or room
+		return err
 	case errors.Is(err, syscall.ENOSPC), strings.Contains(err.Error(), "no space left"):
 		return ErrFull
 	case strings.Contains(err.Error(), "acquire directory lock"): // Badger exports no value for this
