@@ -90,7 +90,7 @@ func open(dir string, inspect bool) (s *Store, changed, err error) {
 	}
 	db, err := badger.Open(o)
 	if err != nil {
-		return nil, changed, whole(translate(err))
+		return nil, changed, whole(dir, translate(err))
 	}
 	return &Store{db, dir}, changed, nil
 }
