@@ -55,7 +55,7 @@ func writeCopy(dir string, m *ledger.Meaning, at time.Time) (err error) {
 	}
 	dir = filepath.Clean(dir)
 	fail := func(err error) error {
-		return couldNot(fmt.Errorf("the copy %q was not made: %w", dir, err), "See that the folder above it is there, may be written and has room; nothing is left of the copy")
+		return couldNot(fmt.Errorf("the copy %q was not made: %w", dir, plainly(err)), "See that the folder above it is there, may be written and has room; nothing is left of the copy")
 	}
 	temp, err := os.MkdirTemp(filepath.Dir(dir), ".copy-*")
 	if err != nil {

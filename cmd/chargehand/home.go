@@ -16,7 +16,6 @@ import (
 	"golang.org/x/term"
 
 	"example.org/chargehand/ledger"
-	"example.org/chargehand/ledger/keys"
 	"example.org/chargehand/ledger/record"
 	"example.org/chargehand/ledger/verdict"
 )
@@ -138,11 +137,7 @@ func (h *home) unlock(cmd *cobra.Command, dir string) (ed25519.PrivateKey, error
 	if err != nil {
 		return nil, err
 	}
-	key, err := keys.Open(filepath.Join(dir, "key"), p)
-	if errors.Is(err, keys.ErrPassphrase) {
-		return nil, couldNot(err, "Type it again; nothing was signed")
-	}
-	return key, err
+	return openKey(cmd, dir, p)
 }
 
 // sign unlocks the key and signs a draft, and says so on w.

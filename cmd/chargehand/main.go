@@ -115,6 +115,8 @@ func plainly(err error) error {
 		return err
 	case errors.Is(err, fs.ErrNotExist):
 		return fmt.Errorf("there is no file or folder %q", p.Path)
+	case errors.Is(err, syscall.ENOSPC):
+		return fmt.Errorf("no space is left on the disk for %q", p.Path)
 	case errors.Is(err, fs.ErrPermission), errors.Is(err, syscall.EROFS):
 		return fmt.Errorf("%q may not be read or written: %w", p.Path, p.Err)
 	}

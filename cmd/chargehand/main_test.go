@@ -3,6 +3,7 @@ package main
 import (
 	"bytes"
 	"errors"
+	"fmt"
 	"maps"
 	"os"
 	"os/exec"
@@ -27,6 +28,12 @@ func TestScripts(t *testing.T) {
 		RequireExplicitExec: true,
 		RequireUniqueNames:  true,
 		Cmds:                cmds,
+		Condition: func(name string) (bool, error) {
+			if name != "mounts" {
+				return false, fmt.Errorf("no condition %q", name)
+			}
+			return exec.Command("unshare", "-rm", "mount", "-t", "tmpfs", "none", os.TempDir()).Run() == nil, nil
+		},
 	})
 }
 

@@ -31,15 +31,16 @@ func (h *home) secret(cmd *cobra.Command, dir string) (ed25519.PrivateKey, [32]b
 	if err != nil {
 		return nil, [32]byte{}, err
 	}
-	key, err := keys.Open(filepath.Join(dir, "key"), p)
-	if errors.Is(err, keys.ErrPassphrase) {
-		return nil, [32]byte{}, couldNot(err, "Type it again; nothing was done")
-	} else if err != nil {
+	key, err := openKey(cmd, dir, p)
+	if err != nil {
 		return nil, [32]byte{}, err
 	}
 	s, err := keys.Unseal(filepath.Join(dir, "secret"), p)
+	if errors.Is(err, keys.ErrMalformed) {
+		err = fmt.Errorf("its file %q is damaged", filepath.Join(dir, "secret"))
+	}
 	if err != nil {
-		return nil, [32]byte{}, couldNot(fmt.Errorf("the book's secret: %w", err), "Restore the file secret from a backup of this folder, or join again in a new folder")
+		return nil, [32]byte{}, couldNot(fmt.Errorf("the book's secret: %w", plainly(err)), "Restore the file secret from a backup of this folder, or join again in a new folder")
 	}
 	if len(s) != 32 {
 		return nil, [32]byte{}, couldNot(fmt.Errorf("the book's secret has %d bytes, not 32", len(s)), "Restore the file secret from a backup of this folder")

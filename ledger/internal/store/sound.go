@@ -117,12 +117,20 @@ var badgerFile = regexp.MustCompile(`\d{6}\.(sst|vlog|mem)|MANIFEST|KEYREGISTRY|
 
 // whole makes what Badger says of a store that it cannot open into damage, with the file it names, unless translate knew
 // better or the file system refused.
-func whole(err error) error {
+func whole(dir string, err error) error {
+	if s := err.Error(); strings.Contains(s, "read-only file system") || strings.Contains(s, "permission denied") { // Badger does not wrap these
+		return &fs.PathError{Op: "open", Path: dir, Err: fs.ErrPermission}
+	}
 	for _, known := range []error{ErrBusy, ErrFull, fs.ErrPermission, syscall.EROFS, syscall.EMFILE, syscall.EIO} {
 		if errors.Is(err, known) {
 			return err
 		}
 	}
+	return damage(err)
+}
+
+// damage names the file that Badger stumbled over, where it does.
+func damage(err error) error {
 	if name := badgerFile.FindString(err.Error()); name != "" {
 		return unreadable(name)
 	}

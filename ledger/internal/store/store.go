@@ -18,7 +18,6 @@ import (
 	"bytes"
 	"encoding/binary"
 	"errors"
-	"fmt"
 	"os"
 	"strings"
 	"syscall"
@@ -41,7 +40,10 @@ var (
 const magic = 1
 
 // Store is an open store. Its methods may be called from several goroutines.
-type Store struct{ db *badger.DB }
+type Store struct {
+	db  *badger.DB
+	dir string
+}
 
 // Open opens the store in dir, and makes it when it is not there. Errors: ErrBusy, ErrDamaged, ErrFull.
 func Open(dir string) (*Store, error) {
@@ -73,6 +75,9 @@ func open(dir string, inspect bool) (s *Store, changed, err error) {
 		WithNumLevelZeroTables(2).
 		WithNumLevelZeroTablesStall(4).
 		WithCompression(options.Snappy)
+	if err := room(dir, 0); err != nil {
+		return nil, nil, err
+	}
 	if inspect {
 		o = o.WithNumCompactors(0) // which would write what was changed as if it had always been so
 	}
@@ -85,9 +90,9 @@ func open(dir string, inspect bool) (s *Store, changed, err error) {
 	}
 	db, err := badger.Open(o)
 	if err != nil {
-		return nil, changed, whole(translate(err))
+		return nil, changed, whole(dir, translate(err))
 	}
-	return &Store{db}, changed, nil
+	return &Store{db, dir}, changed, nil
 }
 
 // Close syncs and closes the store, and gives back the space that Badger reserved ahead for its logs.
@@ -96,16 +101,16 @@ func (s *Store) Close() error { return translate(s.db.Close()) }
 // translate is the one place that knows Badger's errors.
 func translate(err error) error {
 	switch {
-	case err == nil:
-		return nil
+	case err == nil || errors.Is(err, ErrDamaged) || errors.Is(err, ErrFull): // said by sound or room
+		return err
 	case errors.Is(err, syscall.ENOSPC), strings.Contains(err.Error(), "no space left"):
-		return fmt.Errorf("%w (%v)", ErrFull, err)
+		return ErrFull
 	case strings.Contains(err.Error(), "acquire directory lock"): // Badger exports no value for this
 		return ErrBusy
 	case errors.Is(err, badger.ErrTruncateNeeded), errors.Is(err, badger.ErrEncryptionKeyMismatch),
 		strings.Contains(err.Error(), "checksum"), strings.Contains(err.Error(), "magic"),
 		strings.Contains(err.Error(), "MANIFEST"), strings.Contains(err.Error(), "manifest"):
-		return fmt.Errorf("%w (%v)", ErrDamaged, err)
+		return damage(err)
 	}
 	return err
 }
@@ -131,6 +136,9 @@ const (
 // with the same bytes.
 func (s *Store) Append(entries []record.Verified, sync bool) error {
 	for len(entries) > 0 {
+		if err := room(s.dir, txnBytes); err != nil {
+			return err
+		}
 		n, size := 0, 0
 		t := s.db.NewTransaction(true)
 		for ; n < len(entries) && n < txnEntries && size < txnBytes; n++ {
