@@ -45,7 +45,7 @@ func newBookStart() *cobra.Command {
 		if err != nil {
 			return err
 		}
-		key, undo, err := newFolder(dir, p)
+		key, undo, err := newFolder(cmd.Context(), dir, p)
 		if err != nil {
 			return err
 		}
@@ -62,7 +62,7 @@ func newBookStart() *cobra.Command {
 		if err != nil {
 			return err
 		}
-		if err := sealSecret(dir, secret, p); err != nil {
+		if err := sealSecret(cmd.Context(), dir, secret, p); err != nil {
 			return err
 		}
 		b, err := ledger.Found(filepath.Join(dir, "store"), key, f, time.Now)

@@ -172,7 +172,7 @@ func newBookJoin() *cobra.Command {
 		if err != nil {
 			return err
 		}
-		key, undo, err := newFolder(dir, p)
+		key, undo, err := newFolder(cmd.Context(), dir, p)
 		if err != nil {
 			return err
 		}
@@ -202,7 +202,7 @@ func newBookJoin() *cobra.Command {
 		if err != nil {
 			return couldNot(err, "Both laptops need the same chargehand")
 		}
-		if err := sealSecret(dir, secret, p); err != nil {
+		if err := sealSecret(cmd.Context(), dir, secret, p); err != nil {
 			return err
 		}
 		if err := os.WriteFile(filepath.Join(dir, "book"), []byte(id.String()+"\n"), 0o600); err != nil {

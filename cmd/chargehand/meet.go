@@ -249,8 +249,8 @@ func because(m *ledger.Meaning, cause record.ID) string {
 }
 
 // sealSecret keeps the book's secret in its folder, under the key's passphrase.
-func sealSecret(dir string, secret [32]byte, passphrase []byte) error {
-	return keys.Seal(filepath.Join(dir, "secret"), secret[:], passphrase, keys.WorkFactor)
+func sealSecret(ctx context.Context, dir string, secret [32]byte, passphrase []byte) error {
+	return keys.Seal(filepath.Join(dir, "secret"), secret[:], passphrase, workFactor(ctx))
 }
 
 func newSecret() (s [32]byte, err error) {
@@ -259,7 +259,7 @@ func newSecret() (s [32]byte, err error) {
 }
 
 // newFolder makes the book's folder with a new key in it; undo takes away what it made.
-func newFolder(dir string, passphrase []byte) (key ed25519.PrivateKey, undo func(), err error) {
+func newFolder(ctx context.Context, dir string, passphrase []byte) (key ed25519.PrivateKey, undo func(), err error) {
 	if len(passphrase) < 8 {
 		return nil, nil, usageError(fmt.Sprintf("a passphrase of %d characters is too short", len(passphrase)), "Choose 8 or more; several words are easier to type with gloves")
 	}
@@ -271,7 +271,7 @@ func newFolder(dir string, passphrase []byte) (key ed25519.PrivateKey, undo func
 	if err := os.MkdirAll(dir, 0o700); err != nil {
 		return nil, nil, err
 	}
-	key, err = keys.Create(filepath.Join(dir, "key"), passphrase, keys.WorkFactor, rand.Reader)
+	key, err = keys.Create(filepath.Join(dir, "key"), passphrase, workFactor(ctx), rand.Reader)
 	return key, func() {
 		for _, name := range []string{"book", "key", "secret", "store"} {
 			os.RemoveAll(filepath.Join(dir, name))
