@@ -369,6 +369,10 @@ func (v *comparison) better(l Limits, r Reading, rule Rule, reading, room quanti
 	if b := betterGauge(l.In, reading, r.Temperature, combined(others)/byP, room/rule.guard()/byP); b != nil {
 		return fmt.Sprintf("to decide, read again with a better gauge: %s, 0 to %s, divisions of %s or finer", b.Accuracy, l.In.Pressure(b.Span), l.In.Pressure(b.Graduation))
 	}
+	if rule.guard()*combined(others) <= room && rule.guard()*combined(v.Budget[2:]) > room {
+		return fmt.Sprintf("no better gauge alone would decide: a gauge at %s is away from its 20 C by so much that +/-%s remain; bring gauge and unit nearer to it",
+			l.In.Temperature(r.Temperature), l.In.Pressure(rule.guard()*v.Budget[2].U))
+	}
 	worst := slices.MaxFunc(others, func(a, b Term) int { return cmp.Compare(a.U, b.U) })
 	soak := ""
 	if worst.Name == gasTemperature && r.TemperatureFrom == AmbientAfterSoak {

@@ -57,7 +57,7 @@ func newBoard() *cobra.Command {
 			return writeJSON(cmd.OutOrStdout(), rows)
 		}
 		w := tabwriter.NewWriter(cmd.OutOrStdout(), 0, 0, 2, ' ', 0)
-		fmt.Fprintln(w, "VERDICT\tUNIT\tWHERE\tCORRECTED\tLIMITS\tREAD\tENTRY\tNEXT")
+		fmt.Fprintln(w, "VERDICT\tUNIT\tWHERE\tCORRECTED\tLIMITS\tREAD")
 		for _, r := range rows {
 			where, corrected, limits := "not fitted", "", ""
 			if r.Aircraft != "" {
@@ -66,9 +66,17 @@ func newBoard() *cobra.Command {
 			if r.CorrectedPsi != 0 {
 				corrected, limits = in.Pressure(r.judged.Corrected), in.Between(r.judged.Low, r.judged.High)
 			}
-			fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\t%s\t%.8s\t%s\n", r.Verdict, r.Unit, where, corrected, limits, r.Read, r.Entry, r.Next)
+			fmt.Fprintf(w, "%s\t%s\t%s\t%s\t%s\t%s\n", r.Verdict, r.Unit, where, corrected, limits, r.Read)
 		}
-		return w.Flush()
+		if err := w.Flush(); err != nil {
+			return err
+		}
+		for _, r := range rows {
+			if r.urgency < urgency(nil) {
+				fmt.Fprintf(cmd.OutOrStdout(), "\n%s, entry %.8s: %s\n", r.Unit, r.Entry, r.Next)
+			}
+		}
+		return nil
 	}
 	return cmd
 }

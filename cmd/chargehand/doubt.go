@@ -15,7 +15,7 @@ import (
 // The limits of what is taken without asking again are common practice, no source.
 const (
 	farFromHistory  = 0.2            // of the unit's last pressure against its target
-	farFromField    = 25             // K from the last temperature taken in this book
+	farFromField    = 25             // K from every temperature taken in this book
 	sameWeather     = 6 * time.Hour  // for so long
 	coldestOutdoors = 273.15 - 60    // K
 	hottestOutdoors = 273.15 + 60    // K, a shell in the sun
@@ -45,8 +45,8 @@ func doubts(m *ledger.Meaning, u *ledger.Unit, on string, body any, j verdict.Ju
 		if t < coldestOutdoors || float64(t) > hottest {
 			return fmt.Sprintf("a temperature of %s belongs to no field; perhaps another unit was meant", written(o.Temperature))
 		}
-		if last, at, ok := lastTemperature(m, o.TemperatureFrom, done); ok && math.Abs(float64(t-last)) > farFromField {
-			return fmt.Sprintf("a temperature of %s is far from the %s taken at this field at %s; perhaps another unit was meant", written(o.Temperature), in.Temperature(last), clock(at))
+		if near, at, ok := nearestTemperature(m, o.TemperatureFrom, t, done); ok && math.Abs(float64(t-near)) > farFromField {
+			return fmt.Sprintf("a temperature of %s is far from the %s taken at this field at %s; perhaps another unit was meant", written(o.Temperature), in.Temperature(near), clock(at))
 		}
 	}
 	if c, ok := body.(record.Charge); ok {
@@ -83,22 +83,22 @@ func observed(body any) []record.Observation {
 	return nil
 }
 
-// lastTemperature returns the newest temperature of that source taken within the same weather before or at a time.
-func lastTemperature(m *ledger.Meaning, from string, at record.Time) (t quantity.Temperature, when record.Time, ok bool) {
+// nearestTemperature returns, of the temperatures of that source taken within the same weather before a time, the one nearest to t.
+func nearestTemperature(m *ledger.Meaning, from string, t quantity.Temperature, at record.Time) (near quantity.Temperature, when record.Time, ok bool) {
 	for i := range m.Entries {
 		it := &m.Entries[i]
 		done, work := ledger.Done(it.Body)
-		if !work || !it.Counts() || done.Unix > at.Unix || at.Unix-done.Unix > int64(sameWeather/time.Second) || ok && done.Unix < when.Unix {
+		if !work || !it.Counts() || done.Unix > at.Unix || at.Unix-done.Unix > int64(sameWeather/time.Second) {
 			continue
 		}
 		for _, o := range observed(it.Body) {
 			if o.TemperatureFrom != from {
 				continue
 			}
-			if v, err := written(o.Temperature).Temperature(); err == nil {
-				t, when, ok = v, done, true
+			if v, err := written(o.Temperature).Temperature(); err == nil && (!ok || math.Abs(float64(v-t)) < math.Abs(float64(near-t))) {
+				near, when, ok = v, done, true
 			}
 		}
 	}
-	return t, when, ok
+	return near, when, ok
 }

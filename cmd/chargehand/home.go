@@ -3,7 +3,6 @@ package main
 import (
 	"bufio"
 	"bytes"
-	"context"
 	"crypto/ed25519"
 	"errors"
 	"fmt"
@@ -21,16 +20,6 @@ import (
 	"example.org/chargehand/ledger/record"
 	"example.org/chargehand/ledger/verdict"
 )
-
-// workFactor is what the passphrase of a new key costs to try: keys.WorkFactor, but where a rehearsal asked for less.
-func workFactor(ctx context.Context) int {
-	if n, ok := ctx.Value(workFactorKey{}).(int); ok {
-		return n
-	}
-	return keys.WorkFactor
-}
-
-type workFactorKey struct{}
 
 // home is where this laptop keeps a book: the book's id, this laptop's key, and the store.
 type home struct {

@@ -81,7 +81,7 @@ func newRoot() *cobra.Command {
 		{"What was signed", []*cobra.Command{newCountersign(), newCorrect(), newWithdraw(), newAudit()}},
 		{"The book and its laptops", []*cobra.Command{newBook(), newHand(), newMeet()}},
 		{"Equipment", []*cobra.Command{newUnit(), newGauge(), newSheet(), newBottle()}},
-		{"Without a book", []*cobra.Command{newConvert(), newProve(), newVersion()}},
+		{"Without a book", []*cobra.Command{newConvert(), newProve(), newRehearse(), newVersion()}},
 	} {
 		root.AddGroup(&cobra.Group{ID: g.title, Title: g.title + ":"})
 		for _, c := range g.commands {
