@@ -153,8 +153,8 @@ func (r *rehearsal) run(p player, want int, labels string, args ...string) strin
 	return output
 }
 
-// asTyped writes a command as it can be pasted, broken where an option begins.
-func asTyped(args []string, taken int) string {
+// asTyped writes a command after its prompt, broken where an option begins, so that it can be pasted.
+func asTyped(prompt string, args []string) string {
 	words := []string{"chargehand"}
 	for _, w := range quoted(args) {
 		if last := words[len(words)-1]; strings.HasPrefix(last, "--") && !strings.Contains(last, " ") && !strings.HasPrefix(w, "--") {
@@ -163,7 +163,7 @@ func asTyped(args []string, taken int) string {
 			words = append(words, w)
 		}
 	}
-	return strings.ReplaceAll(fold("", words, storyWidth-2-taken, "    "), "\n", " \\\n")
+	return strings.ReplaceAll(fold(prompt, words, storyWidth-2, "    "), "\n", " \\\n")
 }
 
 // do runs a command that must end with a status, and keeps it for the transcript.
@@ -190,7 +190,7 @@ func (r *rehearsal) check(p player, full []string, want, got int, output string)
 
 // tell shows a command, and of its output the lines that begin with one of the labels.
 func (r *rehearsal) tell(p player, args []string, output string, labels ...string) {
-	r.printf("%s$ %s\n", p.prompt, asTyped(args, len(p.prompt)+2))
+	r.printf("%s\n", asTyped(p.prompt+"$ ", args))
 	r.gap = "\n"
 	shown := false
 	for _, l := range strings.Split(output, "\n") {

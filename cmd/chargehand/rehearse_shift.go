@@ -149,6 +149,6 @@ func (r *rehearsal) proof(asha, ben, cato player) {
 	r.head("Go on from here")
 	r.say("The books stay in %s, each with its passphrase beside it. After 'go build ./cmd/chargehand', for instance:", r.dir)
 	for _, args := range [][]string{{"board"}, {"unit", "show", "HA-40/104"}, {"check", "HA-60/203"}} {
-		r.printf("./%s\n", asTyped(slices.Concat(args, ben.own(args)), 2))
+		r.printf("%s\n", asTyped("./", slices.Concat(args, ben.own(args))))
 	}
 }

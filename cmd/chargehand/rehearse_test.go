@@ -44,8 +44,8 @@ func TestRehearsalStops(t *testing.T) {
 }
 
 func TestTyped(t *testing.T) {
-	got := asTyped([]string{"check", "104", "--relieved", "pedal, 12 strokes", "--from", "shell", "--note", strings.Repeat("x", 60)}, 5)
-	want := "chargehand check 104 --relieved \"pedal, 12 strokes\" --from shell \\\n    --note " + strings.Repeat("x", 60)
+	got := asTyped("ben$ ", []string{"check", "104", "--relieved", "pedal, 12 strokes", "--from", "shell", "--note", strings.Repeat("x", 60)})
+	want := "ben$ chargehand check 104 --relieved \"pedal, 12 strokes\" --from shell \\\n    --note " + strings.Repeat("x", 60)
 	if got != want {
 		t.Errorf("typed %q, want %q", got, want)
 	}
