@@ -18,6 +18,8 @@ type Term struct {
 
 const gasTemperature = "gas temperature"
 
+const gaugeTerms = 3 // of a budget are the gauge's, its first; the last of them is the gauge's own temperature
+
 // gaugeReference is the temperature at which a gauge meets its class: 20 degC (EN 837-1).
 const gaugeReference quantity.Temperature = 293.15
 
@@ -42,7 +44,7 @@ func soakLeft(soak time.Duration) float64 {
 
 // budget returns the terms for a charge read as reading, at the state at, brought to the state ref (the same state with a
 // chart, which holds at any temperature): each input's standard uncertainty times the derivative of the corrected pressure
-// by that input. The first three are the gauge's. The gauge is taken to be as warm as the gas.
+// by that input. The gauge is taken to be as warm as the gas.
 func budget(l Limits, g Gauge, r Reading, reading quantity.GaugePressure, at, ref gas.State) []Term {
 	// p_ref = p(T_ref, rho(T, p)): by p (dp/drho)_ref/(dp/drho), by T -(dp/drho)_ref (dp/dT)/(dp/drho).
 	byP := quantity.GaugePressure(ref.DpDRho / at.DpDRho)

@@ -123,6 +123,12 @@ func (g Gauge) corrected(reading quantity.GaugePressure) quantity.GaugePressure 
 	return reading + rows[len(rows)-1].Correction
 }
 
+// shows is what the dial shows at a true gauge pressure: corrected undone. Corrections change slowly along a dial, so the one
+// at the pressure stands for the one at the reading.
+func (g Gauge) shows(p quantity.GaugePressure) quantity.GaugePressure {
+	return p - (g.corrected(p) - p)
+}
+
 // certified says whether a certificate replaces the gauge's class. A table without its uncertainty does not.
 func (g Gauge) certified() bool { return len(g.Correction) > 0 && g.CorrectionUncertainty > 0 }
 
@@ -147,6 +153,11 @@ func (g Gauge) uncertainty(reading quantity.GaugePressure, at quantity.Temperatu
 		u[0] = g.CorrectionUncertainty / 2
 	}
 	return u
+}
+
+// named describes a gauge of the choice below to somebody who looks for one.
+func (g Gauge) named(in Units) string {
+	return fmt.Sprintf("%s, 0 to %s, divisions of %s or finer", g.Accuracy, in.Pressure(g.Span), in.Pressure(g.Graduation))
 }
 
 // Gauges to choose from when the one at hand will not do, coarse to fine: class, and divisions in the span; by the unit of the

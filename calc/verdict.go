@@ -146,8 +146,6 @@ const (
 
 // Judge decides. It never fails: what stands in the way is a reason of a verdict of not assessable, all reasons at once.
 //
-// Before a reading is taken, judging the target itself tells whether the gauge at hand can decide at all.
-//
 // Source: uncertainty by JCGM 100, decision by ILAC-G8:09/2019 sections 4.2.1 and 4.2.2 and JCGM 106.
 func Judge(l Limits, g Gauge, r Reading, rule Rule) Verdict {
 	reading := g.corrected(r.Gauge)
@@ -239,8 +237,35 @@ func obstacles(l Limits, g Gauge, r Reading, target quantity.GaugePressure) []ob
 	case !(r.Relieved.FluidPressure <= relievedBelow):
 		add(relieve, "hydraulic pressure was not relieved: %s on the fluid side", l.In.Pressure(r.Relieved.FluidPressure))
 	}
-	if s := l.SystemPressure; s > 0 && target < s*highCharge && math.Abs(float64(r.Gauge-s)) < nearSystem*float64(s) {
-		add(relieve, "the reading of %s agrees with system pressure %s: the gauge is then reading the fluid", l.In.Pressure(r.Gauge), l.In.Pressure(s))
+	if l.looksLikeFluid(r.Gauge, target) {
+		add(relieve, "the reading of %s agrees with system pressure %s: the gauge is then reading the fluid", l.In.Pressure(r.Gauge), l.In.Pressure(l.SystemPressure))
+	}
+	why = append(why, g.obstacles()...)
+	if !(r.Gauge > 0 && r.Gauge >= g.SpanLow && r.Gauge <= g.Span) {
+		add("use a gauge whose span holds the pressure", "the reading of %s is outside the gauge's span of %s to %s", l.In.Pressure(r.Gauge), l.In.Pressure(g.SpanLow), l.In.Pressure(g.Span))
+	}
+	why = append(why, l.ambientObstacles(r.Ambient)...)
+	switch r.TemperatureFrom {
+	case ShellProbe:
+	case AmbientAfterSoak:
+		if r.Soak < MinimumSoak {
+			add(fmt.Sprintf("repeat after another %.0f min of soak, or use a shell probe", math.Ceil((MinimumSoak-max(r.Soak, 0)).Minutes())),
+				"the unit soaked %.0f min; below %.0f min the air says nothing of the gas", r.Soak.Minutes(), MinimumSoak.Minutes())
+		}
+	default:
+		add("take the gas temperature: a probe on the shell, or the air after a soak", "the gas temperature is not known")
+	}
+	if l.Rated > 0 && r.Gauge > l.Rated {
+		add("bleed below the valve's rating and follow the manual on a valve that was over-pressed", "the charging valve is rated %s, below the reading of %s", l.In.Pressure(l.Rated), l.In.Pressure(r.Gauge))
+	}
+	return append(why, l.obstacles(r.Temperature)...)
+}
+
+// obstacles returns what forbids the use of the gauge, whatever it reads.
+func (g Gauge) obstacles() []obstacle {
+	var why []obstacle
+	add := func(remedy, format string, args ...any) {
+		why = append(why, obstacle{fmt.Sprintf(format, args...), remedy})
 	}
 	if !g.InCalibration {
 		note := ""
@@ -258,32 +283,35 @@ func obstacles(l Limits, g Gauge, r Reading, target quantity.GaugePressure) []ob
 	if !plausible(g.CorrectionUncertainty) || slices.ContainsFunc(g.Correction, func(c CorrectionPoint) bool { return !plausible(c.Reading) || !plausible(c.Correction) }) {
 		add("register the gauge's certificate again", "the certificate of gauge %s has a figure that is no number", g.Name)
 	}
-	if !(r.Gauge > 0 && r.Gauge >= g.SpanLow && r.Gauge <= g.Span) {
-		add("use a gauge whose span holds the pressure", "the reading of %s is outside the gauge's span of %s to %s", l.In.Pressure(r.Gauge), l.In.Pressure(g.SpanLow), l.In.Pressure(g.Span))
+	return why
+}
+
+// obstacles returns what the sheet says against a gas temperature.
+func (l Limits) obstacles(at quantity.Temperature) []obstacle {
+	var why []obstacle
+	add := func(remedy, format string, args ...any) {
+		why = append(why, obstacle{fmt.Sprintf(format, args...), remedy})
 	}
-	if !(r.Ambient >= 20_000 && r.Ambient <= 115_000 && l.Ambient >= 20_000 && l.Ambient <= 115_000) {
-		add("enter the station pressure, not reduced to sea level", "the ambient pressure of %.0f hPa, or the sheet's of %.0f hPa, is none on Earth", r.Ambient/100, l.Ambient/100)
+	if l.TempLow > 0 && at < l.TempLow {
+		add("let the unit warm into the sheet's range", "the gas temperature of %s is below the sheet's least, %s", l.In.Temperature(at), l.In.Temperature(l.TempLow))
 	}
-	switch r.TemperatureFrom {
-	case ShellProbe:
-	case AmbientAfterSoak:
-		if r.Soak < MinimumSoak {
-			add(fmt.Sprintf("repeat after another %.0f min of soak, or use a shell probe", math.Ceil((MinimumSoak-max(r.Soak, 0)).Minutes())),
-				"the unit soaked %.0f min; below %.0f min the air says nothing of the gas", r.Soak.Minutes(), MinimumSoak.Minutes())
-		}
-	default:
-		add("take the gas temperature: a probe on the shell, or the air after a soak", "the gas temperature is not known")
-	}
-	if l.Rated > 0 && r.Gauge > l.Rated {
-		add("bleed below the valve's rating and follow the manual on a valve that was over-pressed", "the charging valve is rated %s, below the reading of %s", l.In.Pressure(l.Rated), l.In.Pressure(r.Gauge))
-	}
-	if l.TempLow > 0 && r.Temperature < l.TempLow {
-		add("let the unit warm into the sheet's range", "the gas temperature of %s is below the sheet's least, %s", l.In.Temperature(r.Temperature), l.In.Temperature(l.TempLow))
-	}
-	if l.TempHigh > 0 && r.Temperature > l.TempHigh {
-		add("let the unit cool into the sheet's range", "the gas temperature of %s is above the sheet's highest, %s", l.In.Temperature(r.Temperature), l.In.Temperature(l.TempHigh))
+	if l.TempHigh > 0 && at > l.TempHigh {
+		add("let the unit cool into the sheet's range", "the gas temperature of %s is above the sheet's highest, %s", l.In.Temperature(at), l.In.Temperature(l.TempHigh))
 	}
 	return why
+}
+
+// looksLikeFluid says whether a dial that shows so much may be reading the fluid side.
+func (l Limits) looksLikeFluid(dial, target quantity.GaugePressure) bool {
+	s := l.SystemPressure
+	return s > 0 && target < s*highCharge && math.Abs(float64(dial-s)) < nearSystem*float64(s)
+}
+
+func (l Limits) ambientObstacles(ambient quantity.Pressure) []obstacle {
+	if ambient >= 20_000 && ambient <= 115_000 && l.Ambient >= 20_000 && l.Ambient <= 115_000 {
+		return nil
+	}
+	return []obstacle{{fmt.Sprintf("the ambient pressure of %.0f hPa, or the sheet's of %.0f hPa, is none on Earth", ambient/100, l.Ambient/100), "enter the station pressure, not reduced to sea level"}}
 }
 
 // plausible says whether a figure can be a pressure on a gauge or sheet at all: up to 1 GPa, above any gas gauge. It keeps what
@@ -330,11 +358,7 @@ func (v *comparison) next(l Limits, g Gauge, r Reading, rule Rule, reading quant
 	case ConditionalFail:
 		return v.trim(l, g, r) + "; " + v.better(l, r, rule, reading, -v.inside())
 	case NotMeasurable:
-		room := min(v.Target-v.Low, v.High-v.Target) // what passes a charge on target
-		if room == 0 {
-			room = (v.High - v.Low) / 2
-		}
-		return v.better(l, r, rule, reading, room)
+		return v.better(l, r, rule, reading, v.roomOnTarget())
 	}
 	return v.trim(l, g, r) + "; then look for the cause, and remove from service if the manual says so"
 }
@@ -349,29 +373,46 @@ func (v *comparison) trim(l Limits, g Gauge, r Reading) string {
 	if err != nil {
 		return "bring it to a temperature at which the target can be set: " + err.Error()
 	}
-	dial := target.Gauge(r.Ambient)
-	dial -= g.corrected(dial) - dial // what the dial shows there; corrections change slowly along it
+	dial, shown := step(g.shows(target.Gauge(r.Ambient))), step(r.Gauge)
 	switch {
 	case l.Rated > 0 && dial > l.Rated:
 		return fmt.Sprintf("do not charge: the valve is rated %s, below the %s needed at %s", l.In.Pressure(l.Rated), l.In.Pressure(dial), l.In.Temperature(r.Temperature))
 	case dial > g.Span:
 		return fmt.Sprintf("charge with another gauge: %s is needed at %s and gauge %s ends at %s", l.In.Pressure(dial), l.In.Temperature(r.Temperature), g.Name, l.In.Pressure(g.Span))
-	case dial < r.Gauge:
-		return fmt.Sprintf("bleed by about %s, to %s %s once settled", l.In.Pressure(r.Gauge-dial), l.In.Pressure(dial), what)
+	case dial < shown:
+		return fmt.Sprintf("bleed by about %s, to %s %s once settled", l.In.Pressure(shown-dial), l.In.Pressure(dial), what)
 	}
-	return fmt.Sprintf("charge by about %s, to %s %s once settled", l.In.Pressure(dial-r.Gauge), l.In.Pressure(dial), what)
+	return fmt.Sprintf("charge by about %s, to %s %s once settled", l.In.Pressure(dial-shown), l.In.Pressure(dial), what)
 }
 
-// better names a gauge whose guard band would leave the room free, or says what stands in the way of any.
-func (v *comparison) better(l Limits, r Reading, rule Rule, reading, room quantity.GaugePressure) string {
-	byP := quantity.GaugePressure(v.ref.DpDRho / v.at.DpDRho)
-	others := v.Budget[3:] // all but the gauge's own
-	if b := betterGauge(l.In, reading, r.Temperature, combined(others)/byP, room/rule.guard()/byP); b != nil {
-		return fmt.Sprintf("to decide, read again with a better gauge: %s, 0 to %s, divisions of %s or finer", b.Accuracy, l.In.Pressure(b.Span), l.In.Pressure(b.Graduation))
+// roomOnTarget is the widest guard band with which a charge on target passes; where the target is itself a limit, with which
+// some charge does.
+func (v *comparison) roomOnTarget() quantity.GaugePressure {
+	if room := min(v.Target-v.Low, v.High-v.Target); room > 0 {
+		return room
 	}
-	if rule.guard()*combined(others) <= room && rule.guard()*combined(v.Budget[2:]) > room {
+	return (v.High - v.Low) / 2
+}
+
+// choose returns a gauge whose guard band would leave the room free, nil when none would.
+func (v *comparison) choose(l Limits, r Reading, rule Rule, reading, room quantity.GaugePressure) *Gauge {
+	byP := quantity.GaugePressure(v.ref.DpDRho / v.at.DpDRho)
+	return betterGauge(l.In, reading, r.Temperature, combined(v.Budget[gaugeTerms:])/byP, room/rule.guard()/byP)
+}
+
+// better names that gauge, or says what stands in the way of any.
+func (v *comparison) better(l Limits, r Reading, rule Rule, reading, room quantity.GaugePressure) string {
+	if b := v.choose(l, r, rule, reading, room); b != nil {
+		return "to decide, read again with a better gauge: " + b.named(l.In)
+	}
+	return v.noBetter(l, r, rule, room)
+}
+
+func (v *comparison) noBetter(l Limits, r Reading, rule Rule, room quantity.GaugePressure) string {
+	others := v.Budget[gaugeTerms:]
+	if warmth := v.Budget[gaugeTerms-1:]; rule.guard()*combined(others) <= room && rule.guard()*combined(warmth) > room {
 		return fmt.Sprintf("no better gauge alone would decide: a gauge at %s is away from its 20 C by so much that +/-%s remain; bring gauge and unit nearer to it",
-			l.In.Temperature(r.Temperature), l.In.Pressure(rule.guard()*v.Budget[2].U))
+			l.In.Temperature(r.Temperature), l.In.Pressure(rule.guard()*warmth[0].U))
 	}
 	worst := slices.MaxFunc(others, func(a, b Term) int { return cmp.Compare(a.U, b.U) })
 	soak := ""

@@ -198,7 +198,7 @@ type Moved struct {
 	Unit     record.UnitRef
 	Was, Now calc.Class
 	Sentence string
-	Cause    record.ID // the entry that moved it: the sheet, gauge or correction that was not in force before
+	Cause    record.ID // the entry that moved it: a sheet, a gauge, or a correction or withdrawal; zero when it is none of these
 }
 
 // Compare says which verdicts moved between two meanings of one book, and by which entry, in the order of after.
@@ -241,29 +241,42 @@ func AgainstShown(m *ledger.Meaning, ids []record.ID) []Moved {
 }
 
 func unseen(m *ledger.Meaning, it *ledger.Item, j Judged) record.ID {
-	for _, by := range it.CorrectedBy {
-		return by
-	}
-	if j.Sheet != nil && !m.Saw(it.ID(), j.Sheet.ID) {
-		return j.Sheet.ID
-	}
-	if g := m.Gauge(ledger.GaugeOf(it.Body)); g != nil && !m.Saw(it.ID(), g.ID) {
-		return g.ID
+	for _, on := range bearing(m, it.ID(), j) {
+		for _, id := range append([]record.ID{on}, m.Item(on).CorrectedBy...) {
+			if !m.Saw(it.ID(), id) {
+				return id
+			}
+		}
 	}
 	return record.ID{}
 }
 
+// bearing are the entries whose words make a verdict: the one judged, its sheet and its gauge.
+func bearing(m *ledger.Meaning, id record.ID, j Judged) []record.ID {
+	on := []record.ID{id}
+	if j.Sheet != nil {
+		on = append(on, j.Sheet.ID)
+	}
+	if g := m.Gauge(ledger.GaugeOf(m.Item(id).Body)); g != nil {
+		on = append(on, g.ID)
+	}
+	return on
+}
+
 func cause(before, after *ledger.Meaning, id record.ID, w, n Judged) record.ID {
-	if a, b := before.Item(id), after.Item(id); len(b.CorrectedBy) > len(a.CorrectedBy) {
-		return b.CorrectedBy[len(b.CorrectedBy)-1]
+	for _, on := range append(bearing(before, id, w), bearing(after, id, n)...) {
+		b, a := before.Item(on), after.Item(on)
+		switch {
+		case b == nil:
+			return on
+		case len(a.CorrectedBy) > len(b.CorrectedBy):
+			return a.CorrectedBy[len(a.CorrectedBy)-1]
+		case a.WithdrawnBy != b.WithdrawnBy:
+			return a.WithdrawnBy
+		}
 	}
 	if n.Sheet != nil && (w.Sheet == nil || w.Sheet.ID != n.Sheet.ID) {
 		return n.Sheet.ID
-	}
-	if g := after.Gauge(ledger.GaugeOf(after.Item(id).Body)); g != nil {
-		if o := before.Gauge(g.Asset); o == nil || o.ID != g.ID {
-			return g.ID
-		}
 	}
 	return record.ID{}
 }
