@@ -2,9 +2,7 @@ package main
 
 import (
 	"bufio"
-	"bytes"
 	"context"
-	"embed"
 	"errors"
 	"fmt"
 	"io"
@@ -13,239 +11,256 @@ import (
 	"regexp"
 	"slices"
 	"strings"
-	"time"
 
 	"github.com/spf13/cobra"
-	"golang.org/x/sync/errgroup"
 )
 
-//go:embed rehearsal
-var rehearsalCharts embed.FS
+// The story keeps to this width; a longer line of a command's output is folded, and a row of a table is cut.
+const storyWidth = 98
 
-const rehearsalPassphrase = "cold nitrogen night"
-
-// rehearsalWorkFactor lets a rehearsal's keys open in no time: they guard nothing.
+// rehearsalWorkFactor lets the keys of a rehearsal, which protect nothing, open at once.
 const rehearsalWorkFactor = 10
 
 func newRehearse() *cobra.Command {
 	var dir string
-	cmd := &cobra.Command{Use: "rehearse", Short: "Work an invented shift on two laptops, told as a story, and leave its books to play with", Args: usageArgs(cobra.NoArgs),
-		Long: "Work a shift with an invented detachment: two laptops, a lead, a technician, an inspector, six units. Every step is a command as\nyou would type it, with what it printed. The books are left for you to go on with; nothing else on this machine is touched."}
-	cmd.Flags().StringVar(&dir, "dir", "", "folder for the books; it must not exist or be empty (else a new temporary folder)")
+	cmd := &cobra.Command{Use: "rehearse", Short: "Run an invented shift through the real commands, and keep its books to try things on", Args: usageArgs(cobra.NoArgs),
+		Long: `Set up an invented detachment in a temporary folder and run a shift: three hands on two laptops, six accumulators, three gauges;
+readings, a charge, a second signature, a meeting over a socket of this machine that moves a verdict, an audit. Each step is a
+real command with its real output; a step that does not go as it should ends the rehearsal. The books stay for you to go on with.`,
+		Example: "  chargehand rehearse\n  chargehand rehearse --dir dry-creek"}
+	cmd.Flags().StringVar(&dir, "dir", "", "new or empty folder for it (else a temporary one)")
 	cmd.RunE = func(cmd *cobra.Command, _ []string) error {
 		dir, err := rehearsalFolder(dir)
 		if err != nil {
 			return err
 		}
-		r := &rehearsal{ctx: context.WithValue(cmd.Context(), workFactorKey{}, rehearsalWorkFactor), dir: dir, w: cmd.OutOrStdout(), entries: map[string]string{}}
-		if err := r.prepare(); err != nil {
+		log, err := os.Create(filepath.Join(dir, "transcript.txt"))
+		if err != nil {
 			return err
 		}
-		if r.shift(); r.err != nil {
-			return couldNot(r.err, fmt.Sprintf("The rehearsal ends here; its books are in %s", dir))
-		}
-		return nil
+		r := &rehearsal{ctx: context.WithValue(cmd.Context(), workFactorKey{}, rehearsalWorkFactor), out: cmd.OutOrStdout(), log: log, dir: dir}
+		r.shift()
+		return errors.Join(r.err, log.Close())
 	}
 	return cmd
 }
 
+// rehearsalFolder returns a folder that has nothing in it.
 func rehearsalFolder(dir string) (string, error) {
 	if dir == "" {
 		return os.MkdirTemp("", "chargehand-rehearsal-")
 	}
-	if names, err := os.ReadDir(dir); err == nil && len(names) > 0 {
-		return "", usageError(fmt.Sprintf("--dir %q holds something already", dir), "Name a new or empty folder")
+	dir, err := filepath.Abs(dir)
+	if err != nil {
+		return "", err
 	}
-	if err := os.MkdirAll(dir, 0o700); err != nil {
-		return "", usageError(fmt.Sprintf("--dir %q: %v", dir, err), "Name a folder that can be made")
+	switch entries, err := os.ReadDir(dir); {
+	case errors.Is(err, os.ErrNotExist):
+		return dir, os.MkdirAll(dir, 0o700)
+	case err != nil:
+		return "", usageError(fmt.Sprintf("--dir %q: %v", dir, err), "Name a new folder")
+	case len(entries) > 0:
+		return "", usageError(fmt.Sprintf("--dir %q is not empty", dir), "Name a new folder; a rehearsal writes over nothing")
 	}
-	return filepath.Abs(dir)
+	return dir, nil
 }
 
-// rehearsal runs commands of this program in this process, each laptop with a folder of its own, and tells them. The first
-// thing that goes other than expected ends the story.
+// A rehearsal runs commands and tells them. After the first error it does nothing more.
 type rehearsal struct {
-	ctx     context.Context
-	dir     string
-	w       io.Writer
-	entries map[string]string // names that the story gives to entries
-	err     error
+	ctx      context.Context
+	out, log io.Writer // the story; every command in full
+	dir      string
+	gap      string // before the next paragraph
+	err      error
 }
 
-func (r *rehearsal) prepare() error {
-	if err := os.WriteFile(filepath.Join(r.dir, "passphrase"), []byte(rehearsalPassphrase+"\n"), 0o600); err != nil {
-		return err
-	}
-	for _, name := range []string{"HA-60-rev-A.csv", "HA-60-rev-B.csv"} {
-		data, err := rehearsalCharts.ReadFile("rehearsal/" + name)
-		if err != nil {
-			return err
-		}
-		if err := os.WriteFile(filepath.Join(r.dir, name), data, 0o600); err != nil {
-			return err
-		}
-	}
-	return nil
-}
+// A player is a person with a folder for their book and key.
+type player struct{ prompt, book, passphrase string }
 
-// say tells what a person does and why.
-func (r *rehearsal) say(text string) {
+// enter gives a person a laptop's folder and a passphrase.
+func (r *rehearsal) enter(laptop, name string) player {
+	p := player{name, filepath.Join(r.dir, laptop, name), filepath.Join(r.dir, laptop, name+".passphrase")}
 	if r.err == nil {
-		fmt.Fprintf(r.w, "\n%s\n", fold(text, "", 92))
+		r.err = os.MkdirAll(filepath.Dir(p.book), 0o700)
+	}
+	if r.err == nil {
+		r.err = os.WriteFile(p.passphrase, []byte(name+" rehearses a cold night\n"), 0o600)
+	}
+	return p
+}
+
+func (r *rehearsal) printf(format string, args ...any) {
+	if r.err == nil {
+		_, r.err = fmt.Fprintf(r.out, format, args...)
 	}
 }
 
-// A step is one command with what must come of it.
-type step struct {
-	laptop string
-	line   string   // the command, after chargehand; @name stands for an entry named before
-	status int      // the exit status that must come
-	expect string   // that the output must hold, as a regular expression
-	name   string   // names the entry that it signs
-	show   []string // beginnings of the lines told; all when empty, none when quiet
-	quiet  bool
+// say tells a paragraph. Its figures come from find, so that they are the commands' own.
+func (r *rehearsal) say(format string, args ...any) {
+	r.printf("%s%s\n", r.gap, fold("", strings.Fields(fmt.Sprintf(format, args...)), 90, ""))
+	r.gap = "\n"
 }
 
-var signedEntry = regexp.MustCompile(`signed +entry ([0-9a-f]{8})`)
+func (r *rehearsal) head(title string) {
+	r.printf("\n-- %s\n", title)
+	r.gap = ""
+}
 
-// do runs a step and tells it.
-func (r *rehearsal) do(s step) {
+// find returns the first group of a pattern in an output; a story whose figure is not there ends.
+func (r *rehearsal) find(output, pattern string) string {
 	if r.err != nil {
-		return
+		return ""
 	}
-	line := s.line
-	for name, id := range r.entries {
-		line = strings.ReplaceAll(line, "@"+name, id)
+	m := regexp.MustCompile("(?m)" + pattern).FindStringSubmatch(output)
+	if m == nil {
+		r.err = couldNot(fmt.Errorf("the rehearsal looked for %q in what a command printed, and it is not there:\n%s", pattern, output), "Report this; the books so far are in "+r.dir)
+		return ""
 	}
-	var out bytes.Buffer
-	status := run(r.ctx, r.args(s.laptop, line), streams{strings.NewReader(""), &out, &out})
-	if !s.quiet {
-		r.tell(s.laptop, line, out.String(), s.show)
-	}
-	if status != s.status || !regexp.MustCompile(s.expect).MatchString(out.String()) {
-		r.err = fmt.Errorf("'chargehand %s' ended with status %d and printed %q; the rehearsal expected %d and %q", line, status, out.String(), s.status, s.expect)
-		return
-	}
-	if m := signedEntry.FindStringSubmatch(out.String()); m != nil && s.name != "" {
-		r.entries[s.name] = m[1]
-	}
+	return m[1]
 }
 
-// args splits a command line as the story prints it and adds where the laptop's book lies.
-func (r *rehearsal) args(laptop, line string) []string {
-	args := splitWords(line)
-	args = append(args, "--book", filepath.Join(r.dir, laptop))
-	for i, a := range args {
-		if strings.HasSuffix(a, ".csv") {
-			args[i] = filepath.Join(r.dir, a)
-		}
+// own returns the flags that the story leaves out, those of them that a command takes: whose book, and the passphrase.
+func (p player) own(args []string) (own []string) {
+	c, _, err := newRoot().Find(args)
+	if err != nil {
+		return nil // run says what is wrong
 	}
-	if needsPassphrase(args[0], line) {
-		args = append(args, "--passphrase-file", filepath.Join(r.dir, "passphrase"))
+	if c.Flags().Lookup("book") != nil {
+		own = append(own, "--book", p.book)
 	}
-	return args
+	if c.Flags().Lookup("passphrase-file") != nil {
+		own = append(own, "--passphrase-file", p.passphrase)
+	}
+	return own
 }
 
-func needsPassphrase(command, line string) bool {
-	return command != "board" && command != "audit" && !strings.Contains(line, " show") && !strings.Contains(line, " list")
-}
-
-// splitWords splits at spaces outside double quotes; there are no escapes.
-func splitWords(line string) []string {
+func quoted(args []string) []string {
 	var words []string
-	for i, part := range strings.Split(line, `"`) {
-		if i%2 == 1 {
-			words = append(words, part)
-			continue
+	for _, a := range args {
+		if strings.ContainsAny(a, " '\\$&;") {
+			a = `"` + a + `"`
 		}
-		words = append(words, strings.Fields(part)...)
+		words = append(words, a)
 	}
 	return words
 }
 
-func (r *rehearsal) tell(laptop, line, out string, show []string) {
-	fmt.Fprintf(r.w, "\n  %s$ chargehand %s\n", laptop, fold(line, "      ", 84))
-	told := true
-	for _, l := range strings.Split(strings.TrimRight(out, "\n"), "\n") {
-		if !strings.HasPrefix(l, " ") || len(show) == 0 { // a line that is indented belongs to the one before it
-			told = len(show) == 0 || slices.ContainsFunc(show, func(s string) bool { return strings.HasPrefix(l, s) })
-		}
-		if told {
-			fmt.Fprintf(r.w, "    %s\n", fold(l, "                ", 96))
-		}
-	}
+// run runs a command that must end with a status, tells it with the lines of its output that begin with one of the labels, parted
+// by commas, and returns the output.
+func (r *rehearsal) run(p player, want int, labels string, args ...string) string {
+	output := r.do(p, want, args...)
+	r.tell(p, args, output, strings.Split(labels, ", ")...)
+	return output
 }
 
-// fold breaks a line at spaces before width, and indents what follows.
-func fold(text, indent string, width int) string {
-	var lines []string
-	for len(text) > width {
-		at := strings.LastIndex(text[:width], " ")
-		if at < width/3 {
-			break
-		}
-		lines = append(lines, text[:at])
-		text = strings.TrimLeft(text[at:], " ")
-		if len(lines) == 1 {
-			width = 96 - len(indent)
+// asTyped writes a command after its prompt, broken where an option begins, so that it can be pasted.
+func asTyped(prompt string, args []string) string {
+	words := []string{"chargehand"}
+	for _, w := range quoted(args) {
+		if last := words[len(words)-1]; strings.HasPrefix(last, "--") && !strings.Contains(last, " ") && !strings.HasPrefix(w, "--") {
+			words[len(words)-1] += " " + w
+		} else {
+			words = append(words, w)
 		}
 	}
-	return strings.Join(append(lines, text), "\n"+indent)
+	return strings.ReplaceAll(fold(prompt, words, storyWidth-2, "    "), "\n", " \\\n")
 }
 
-// together runs a command on one laptop that waits to be reached, and one on another that reaches it over a real socket. The
-// second's line may name @CODE and @ADDRESS, which the first prints.
-func (r *rehearsal) together(first, second step) {
+// do runs a command that must end with a status, and keeps it for the transcript.
+func (r *rehearsal) do(p player, want int, args ...string) string {
+	if r.err != nil {
+		return ""
+	}
+	var out strings.Builder
+	full := slices.Concat(args, p.own(args))
+	r.check(p, full, want, run(r.ctx, full, streams{strings.NewReader(""), &out, &out}), out.String())
+	return out.String()
+}
+
+// check writes a finished command to the transcript, and ends the rehearsal when it did not go as expected.
+func (r *rehearsal) check(p player, full []string, want, got int, output string) {
 	if r.err != nil {
 		return
 	}
-	pr, pw := io.Pipe()
-	var one, two bytes.Buffer
-	var status1, status2 int
-	var line2 string
-	var g errgroup.Group
-	ctx, cancel := context.WithTimeout(r.ctx, 2*time.Minute)
-	defer cancel()
-	g.Go(func() error {
-		defer pw.Close()
-		status1 = run(ctx, append(r.args(first.laptop, first.line), "--listen", "127.0.0.1:0"), streams{strings.NewReader(""), io.MultiWriter(&one, pw), pw})
-		return nil
-	})
-	g.Go(func() error {
-		lines := bufio.NewScanner(pr)
-		found := map[string]string{}
-		for lines.Scan() {
-			if f := strings.Fields(lines.Text()); len(f) > 1 && f[0] == "code" {
-				found["@CODE"] = f[1]
-			} else if len(f) > 3 && f[0] == "in" && f[1] == "reach" {
-				found["@ADDRESS"] = f[3]
-				break
+	line := strings.Join(quoted(full), " ")
+	if _, r.err = fmt.Fprintf(r.log, "%s$ chargehand %s\n%s(exit status %d)\n\n", p.prompt, line, output, got); r.err == nil && got != want {
+		r.err = couldNot(fmt.Errorf("the rehearsal's step 'chargehand %s' ended with status %d and not %d: %s", line, got, want, strings.TrimRight(output, ".\n")), "Report this; the books so far are in "+r.dir)
+	}
+}
+
+// tell shows a command, and of its output the lines that begin with one of the labels.
+func (r *rehearsal) tell(p player, args []string, output string, labels ...string) {
+	r.printf("%s\n", asTyped(p.prompt+"$ ", args))
+	r.gap = "\n"
+	shown := false
+	for _, l := range strings.Split(output, "\n") {
+		if !strings.HasPrefix(l, " ") { // one that is indented belongs to the line before it
+			shown = slices.ContainsFunc(labels, func(label string) bool { return strings.HasPrefix(l, label) })
+		}
+		if shown {
+			first, rest := "", l
+			if at := strings.LastIndex(l[:min(len(l), 12)], " ") + 1; at > 1 {
+				first, rest = l[:at], l[at:]
 			}
-		}
-		g.Go(func() error { _, err := io.Copy(io.Discard, pr); return err }) // what the first prints from here on
-		if found["@ADDRESS"] == "" {
-			return fmt.Errorf("'chargehand %s' did not come in reach: %s", first.line, one.String())
-		}
-		line2 = strings.NewReplacer("@CODE", found["@CODE"], "@ADDRESS", found["@ADDRESS"]).Replace(second.line)
-		status2 = run(ctx, r.args(second.laptop, line2), streams{strings.NewReader(""), &two, &two})
-		return nil
-	})
-	if r.err = g.Wait(); r.err != nil {
-		return
-	}
-	if !first.quiet {
-		r.tell(first.laptop, first.line, one.String(), first.show)
-	}
-	if !second.quiet {
-		r.tell(second.laptop, line2, two.String(), second.show)
-	}
-	for _, x := range []struct {
-		s      step
-		status int
-		out    string
-	}{{first, status1, one.String()}, {second, status2, two.String()}} {
-		if x.status != x.s.status || !regexp.MustCompile(x.s.expect).MatchString(x.out) {
-			r.err = errors.Join(r.err, fmt.Errorf("'chargehand %s' ended with status %d and printed %q; the rehearsal expected %d and %q", x.s.line, x.status, x.out, x.s.status, x.s.expect))
+			if len(l) > storyWidth-4 { // a table that fits keeps its columns
+				l = fold(first, strings.Fields(rest), storyWidth-4, "            ")
+			}
+			r.printf("    %s\n", strings.ReplaceAll(strings.TrimRight(l, " "), "\n", "\n    "))
 		}
 	}
+}
+
+// pair runs a command that waits for a laptop, and when it says how it is reached the other laptop's command.
+func (r *rehearsal) pair(host player, hostArgs []string, guest player, guestArgs func(output string) []string) (atHost, atGuest string, guestLine []string) {
+	if r.err != nil {
+		return "", "", nil
+	}
+	ctx, cancel := context.WithCancel(r.ctx)
+	defer cancel()
+	fullHost := slices.Concat(hostArgs, host.own(hostArgs))
+	read, write := io.Pipe()
+	hostStatus, guestStatus := make(chan int, 1), make(chan int, 1)
+	go func() {
+		hostStatus <- run(ctx, fullHost, streams{strings.NewReader(""), write, write})
+		write.Close()
+	}()
+	var hostOut, guestOut strings.Builder
+	var fullGuest []string
+	for lines := bufio.NewScanner(read); lines.Scan(); { // to the end of the host's command
+		fmt.Fprintln(&hostOut, lines.Text())
+		if fullGuest == nil && strings.HasPrefix(lines.Text(), "in reach ") {
+			guestLine = guestArgs(hostOut.String())
+			fullGuest = slices.Concat(guestLine, guest.own(guestLine))
+			go func() {
+				got := run(ctx, fullGuest, streams{strings.NewReader(""), &guestOut, &guestOut})
+				if got != statusOK {
+					cancel() // nobody else comes
+				}
+				guestStatus <- got
+			}()
+		}
+	}
+	read.Close()
+	got := <-hostStatus
+	if fullGuest != nil { // first: where both fail, the guest's error says why
+		r.check(guest, fullGuest, statusOK, <-guestStatus, guestOut.String())
+	}
+	r.check(host, fullHost, statusOK, got, hostOut.String())
+	return hostOut.String(), guestOut.String(), guestLine
+}
+
+// fold puts words on lines no wider than width after what the first begins with; the others begin with the indent.
+func fold(first string, words []string, width int, indent string) string {
+	var lines []string
+	line := first
+	for i, w := range words {
+		if i > 0 && len(line)+1+len(w) > width {
+			lines = append(lines, line)
+			line = indent
+		} else if i > 0 {
+			line += " "
+		}
+		line += w
+	}
+	return strings.Join(append(lines, line), "\n")
 }

@@ -1,88 +1,154 @@
 package main
 
 import (
+	_ "embed"
 	"fmt"
+	"os"
+	"path/filepath"
+	"slices"
 	"time"
 )
 
-// shift is the story. The field, the people, the aircraft and the types are invented. It states no computed figure of its own:
-// each comes from a command, and each outcome that a sentence speaks of is one that the step below it demands.
+//go:embed rehearsal/HA-60.csv
+var rehearsalChart []byte
+
+// rightOnTheDial is the sheet's charge, and what the dial of an overcharged unit shows in the cold.
+const rightOnTheDial = "1250psi"
+
+// shift is the story. The field, people, aircraft, types and manuals are invented. A sentence states no computed figure of its
+// own, find takes it from what the command printed; and what a sentence says came of a step is demanded of it.
 func (r *rehearsal) shift() {
-	now := time.Now()
-	calibrated, due, month := now.AddDate(0, -3, 0).Format(time.DateOnly), now.AddDate(0, 9, 0).Format(time.DateOnly), now.AddDate(0, -1, 0).Format(time.DateOnly)
-	const relieved = `--relieved "brake pedal, 12 strokes" --fluid 0psi`
-	verdict := []string{"verdict", "corrected", "next", "signed"}
+	asha, ben, cato := r.enter("laptop-1", "asha"), r.enter("laptop-2", "ben"), r.enter("laptop-2", "cato")
+	r.say("A cold shift at Dry Creek. The field, its people, aircraft and manuals are invented; the commands are real, run just " +
+		"now, and print what you see. Left out are --book, --passphrase-file and lines that tell nothing new: transcript.txt " +
+		"has them. Keys open at once here; a real one takes about a second, so that guessing is slow.")
+	r.outset(asha)
+	r.joining(asha, ben, cato)
+	r.readings(ben)
+	r.charging(ben, cato)
+	r.meeting(asha, ben, cato)
+	r.proof(asha, ben, cato)
+}
 
-	r.say("Dry Creek is an invented field: two aircraft, KITE 2 and KITE 5, no internet, a cold evening. Asha Brandt leads the detachment. " +
-		"On her laptop she starts the book and enters what the manuals approve: one type has a charge with a tolerance, the other a chart.")
-	r.do(step{laptop: "lead", line: `book start --title "Dry Creek" --name "Asha Brandt"`, expect: "holds +1 entries"})
-	r.do(step{laptop: "lead", line: `sheet add --part HA-40 --charge 1250psi --minus 100psi --plus 100psi --at 70F --system-pressure 3000psi --document CM-29 --revision A --effective ` + month, expect: "signed"})
-	r.do(step{laptop: "lead", line: `sheet add --part HA-60 --chart HA-60-rev-A.csv --at 70F --system-pressure 3000psi --document CM-31 --revision A --effective ` + month, expect: "signed"})
+// daysOn is a date so many days from now.
+func daysOn(days int) string { return time.Now().AddDate(0, 0, days).Format(time.DateOnly) }
 
-	r.say("Then the gauges, each with its class and calibration, and six units where they are fitted.")
-	gauge := func(asset, span, accuracy, division string) string {
-		return fmt.Sprintf(`gauge add --asset %s --span %s --accuracy "%s" --division %s --calibrated %s --due %s`, asset, span, accuracy, division, calibrated, due)
-	}
-	r.do(step{laptop: "lead", line: gauge("G-7", "2000psi", "ASME 2A", "10psi"), expect: "signed"})
-	r.do(step{laptop: "lead", line: gauge("G-8", "1000psi", "ASME 2A", "5psi"), expect: "signed", quiet: true})
-	r.do(step{laptop: "lead", line: gauge("G-9", "5000psi", "ASME B", "100psi"), expect: "signed", quiet: true})
-	for _, u := range []struct{ part, serial, aircraft, position string }{
-		{"HA-40", "104", "KITE 2", "left brake"}, {"HA-40", "105", "KITE 2", "right brake"}, {"HA-60", "31", "KITE 2", "gear"},
-		{"HA-40", "118", "KITE 5", "left brake"}, {"HA-40", "121", "KITE 5", "right brake"}, {"HA-60", "33", "KITE 5", "gear"},
-	} {
-		r.do(step{laptop: "lead", line: fmt.Sprintf("unit add --part %s --serial %s", u.part, u.serial), expect: "signed", quiet: true})
-		r.do(step{laptop: "lead", line: fmt.Sprintf(`unit fit %s/%s --aircraft "%s" --position "%s"`, u.part, u.serial, u.aircraft, u.position), expect: "signed", quiet: true})
-	}
-	r.do(step{laptop: "lead", line: "gauge list", expect: "G-9"})
-
-	r.say("Ben Osei, technician, has the other laptop. Asha reads a one-time code out; both compare the key words before she says yes. " +
-		"Cato Lund, inspector, joins the same way with a key in a folder of his own: a signature is one person's, whoever owns the laptop.")
-	admit := func(role string) step {
-		return step{laptop: "lead", line: "hand admit --by-code --yes --role " + role, expect: "signed", show: []string{"code", "asks", "key words", "signed"}}
-	}
-	r.together(admit("technician"), step{laptop: "tech", line: `book join --code @CODE --name "Ben Osei" --to @ADDRESS`, expect: "the other laptop's is the same", show: []string{"key words", "received", "fingerprint"}})
-	quietly := admit("inspector")
-	quietly.quiet = true
-	r.together(quietly, step{laptop: "inspector", line: `book join --code @CODE --name "Cato Lund" --to @ADDRESS`, expect: "the other laptop's is the same", quiet: true})
-
-	r.say("Ben walks out to KITE 2, out of reach of everybody. The left brake's dial looks low against the sheet. It is the cold: at the sheet's temperature the charge is in limits.")
-	r.do(step{laptop: "tech", line: `check 104 --gauge G-7 --pressure 1060psi --temperature 14F --from shell ` + relieved, expect: "verdict +PASS"})
-	r.say("The gauge from the cart is too coarse for the gear unit's chart; the tool says so before anything is signed, and which gauge would do.")
-	r.do(step{laptop: "tech", line: `check 31 --gauge G-9 --pressure 580psi --temperature 14F --from shell --unsigned ` + relieved, status: statusNo, expect: "NOT MEASURABLE", show: []string{"verdict", "next"}})
-	r.do(step{laptop: "tech", line: `check 31 --gauge G-8 --pressure 580psi --temperature 14F --from shell ` + relieved, expect: "verdict +PASS", name: "gear", show: verdict})
-	r.do(step{laptop: "tech", line: `check 105 --gauge G-7 --pressure 1085psi --temperature 14F --from shell ` + relieved, expect: "verdict +PASS", quiet: true})
-
-	r.say("KITE 5 stands under the hangar heater. The right brake's dial looks well within the sheet's figures, and is not: the gas is warm. " +
-		"The tool first doubts the temperature, so far from the last one, and wants a reason.")
-	warm := `check 121 --gauge G-7 --pressure 1165psi --temperature 95F --from shell ` + relieved
-	r.do(step{laptop: "tech", line: warm, status: statusUsage, expect: "far from the 14 F"})
-	r.do(step{laptop: "tech", line: warm + ` --unlikely-because "under the hangar heater"`, status: statusNo, expect: "verdict +(CONDITIONAL )?FAIL"})
-	r.say("Ben charges it from bottle N2-3, lets it settle, and signs what he found and what he left.")
-	r.do(step{laptop: "tech", line: `charge 121 --gauge G-7 --found 1165psi --found-temperature 95F --found-from shell --left 1325psi --left-temperature 96F --left-from shell --left-soak 40m --bottle N2-3 ` + relieved,
-		expect: "verdict +PASS", name: "charge", show: []string{"as found", "as left", "verdict", "corrected", "signed"}})
-	r.do(step{laptop: "tech", line: `check 33 --gauge G-8 --pressure 690psi --temperature 95F --from shell ` + relieved, expect: "verdict +PASS", quiet: true})
-
-	r.say("Meanwhile, in the shelter, a revised manual page has come by courier. Asha enters it; it is in force at once. Ben knows nothing of it yet.")
-	r.do(step{laptop: "lead", line: `sheet add --part HA-60 --chart HA-60-rev-B.csv --at 70F --system-pressure 3000psi --document CM-31 --revision B --effective ` + now.AddDate(0, 0, -1).Format(time.DateOnly), expect: "signed"})
-	r.do(step{laptop: "lead", line: `check 118 --gauge G-7 --pressure 1100psi --temperature 14F --from shell ` + relieved, expect: "verdict +PASS", show: []string{"verdict", "corrected", "signed"}})
-
-	r.say("Ben comes back into reach and they meet. Each laptop takes what it lacks, verifies every signature and computes every verdict anew: " +
-		"what Ben signed as a pass under the old page is told on both sides, with the entry that moved it.")
-	r.together(step{laptop: "lead", line: "meet --once", expect: "moved +HA-60/31", quiet: true}, step{laptop: "tech", line: "meet --to @ADDRESS", expect: `moved +HA-60/31, entry [0-9a-f]+: pass, now .*because of CM-31 rev B`})
-	r.together(step{laptop: "lead", line: "meet --once", expect: "met", quiet: true}, step{laptop: "inspector", line: "meet --to @ADDRESS", expect: "the other laptop's is the same", show: []string{"met", "received", "fingerprint"}})
-
-	r.say("Cato has looked at the work on the right brake of KITE 5. His signature is bound to exactly what Ben signed; had Ben asked himself, the tool would have refused.")
-	r.do(step{laptop: "inspector", line: "countersign @charge --meaning inspected", expect: "signed"})
-	r.do(step{laptop: "tech", line: "countersign @charge --meaning inspected", status: statusNot, expect: "must be signed by"})
-	r.together(step{laptop: "lead", line: "meet --once", expect: "met", quiet: true}, step{laptop: "inspector", line: "meet --to @ADDRESS", expect: "the other laptop's is the same", quiet: true})
-
-	r.say("End of the shift. The board puts the most urgent first; the audit verifies the whole book, and needs no key and no trust in any laptop.")
-	r.do(step{laptop: "lead", line: "board", expect: "HA-60/31"})
-	r.do(step{laptop: "lead", line: "audit", expect: "checked"})
-
-	r.say(fmt.Sprintf("The books are yours to go on with; %q opens every key. (A real key takes about a second to open, so that guessing is slow; these do not.)", rehearsalPassphrase))
+func (r *rehearsal) outset(asha player) {
+	r.head("Laptop one: Asha Brandt, lead, opens the book")
+	r.run(asha, statusOK, "founding", "book", "start", "--title", "Dry Creek", "--name", "Asha Brandt")
+	r.say("She enters the limits as the manuals give them: one type by a charge with its tolerance, one by a chart.")
+	chart := filepath.Join(r.dir, "HA-60.csv")
 	if r.err == nil {
-		fmt.Fprintf(r.w, "\n  cd %s     # with chargehand built: go build -o chargehand ./cmd/chargehand\n", r.dir)
-		fmt.Fprint(r.w, "  chargehand unit show HA-60/31 --book lead\n  chargehand check 33 --book tech      # asks for what it needs\n  chargehand meet --book lead          # and in another window: chargehand meet --book tech\n")
+		r.err = os.WriteFile(chart, rehearsalChart, 0o600)
+	}
+	r.run(asha, statusOK, "none", "sheet", "add", "--part", "HA-40", "--charge", rightOnTheDial, "--minus", "100psi", "--plus", "100psi", "--at", "70F",
+		"--system-pressure", "3000psi", "--document", "CM-29", "--revision", "A", "--effective", daysOn(-400))
+	r.run(asha, statusOK, "none", "sheet", "add", "--part", "HA-60", "--chart", chart, "--at", "70F", "--system-pressure", "3000psi",
+		"--document", "CM-31", "--revision", "A", "--effective", daysOn(-400))
+	for _, g := range [][]string{{"M-1", "2000psi", "ASME 3A", "5psi"}, {"G-7", "2500psi", "EN 1.6", "20psi"}, {"R-9", "5000psi", "EN 2.5", "100psi"}} {
+		r.do(asha, statusOK, "gauge", "add", "--asset", g[0], "--span", g[1], "--accuracy", g[2], "--division", g[3], "--calibrated", daysOn(-90), "--due", daysOn(275))
+	}
+	for _, u := range [][]string{{"HA-40", "104", "KITE 2", "left brake"}, {"HA-40", "105", "KITE 2", "right brake"}, {"HA-60", "201", "KITE 2", "nose gear"},
+		{"HA-40", "106", "KITE 5", "left brake"}, {"HA-60", "202", "KITE 5", "nose gear"}, {"HA-60", "203", "KITE 5", "cargo door"}} {
+		r.do(asha, statusOK, "unit", "add", "--part", u[0], "--serial", u[1])
+		r.do(asha, statusOK, "unit", "fit", u[0]+"/"+u[1], "--aircraft", u[2], "--position", u[3])
+	}
+	r.say("Likewise six units, where they are fitted, and three gauges: M-1, the master; G-7, on the nitrogen cart; R-9, off a " +
+		"bottle regulator.")
+}
+
+func (r *rehearsal) joining(asha, ben, cato player) {
+	r.head("Laptop two: Ben Osei, technician, and Cato Lund, inspector, join")
+	admit := func(role string) []string {
+		return []string{"hand", "admit", "--by-code", "--role", role, "--listen", "127.0.0.1:0", "--yes"}
+	}
+	join := func(name string) func(string) []string {
+		return func(output string) []string {
+			return []string{"book", "join", "--name", name, "--code", r.find(output, `^code +(\S+)`), "--to", r.find(output, `^in reach +at (\S+)`)}
+		}
+	}
+	atHost, atGuest, line := r.pair(asha, admit("technician"), ben, join("Ben Osei"))
+	r.say("Asha reads the code out across the ramp, and would compare the key words before her yes (--yes stands in for her). The " +
+		"book travels over a socket, here this machine's own.")
+	r.tell(asha, admit("technician"), atHost, "code", "asks", "key words")
+	r.tell(ben, line, atGuest, "key words", "received")
+	r.pair(asha, admit("inspector"), cato, join("Cato Lund"))
+	r.meet(asha, ben)
+	r.say("Cato joins likewise, in a folder of his own on Ben's laptop: a key is one person's. Ben meets Asha once more, to know him.")
+}
+
+// relieved adds how the fluid side was made ready.
+func relieved(args ...string) []string {
+	return append(args, "--relieved", "pedal, 12 strokes", "--fluid", "0psi")
+}
+
+func (r *rehearsal) readings(ben player) {
+	r.head("On the line at dusk, laptop two alone: Ben reads")
+	low := r.run(ben, statusOK, "verdict, corrected", relieved("check", "104", "--gauge", "M-1", "--pressure", "1045psi", "--temperature", "18F", "--from", "shell")...)
+	r.find(low, `^verdict +(PASS)$`)
+	r.say("The dial is below the sheet's lowest figure, and the charge is good: at the sheet's temperature the same gas shows %s. "+
+		"Next, the very figure that the sheet asks for:", r.find(low, `^corrected +(\S+ psi)`))
+	high := r.run(ben, statusNo, "verdict, corrected, next", relieved("check", "105", "--gauge", "M-1", "--pressure", rightOnTheDial, "--temperature", "18F", "--from", "shell")...)
+	r.find(high, `^next +(bleed) `)
+	r.say("Right on the dial, and overcharged: %s at the sheet's temperature. For the next unit the master gauge is not at hand:", r.find(high, `^corrected +(\S+ psi)`))
+	coarse := r.run(ben, statusNo, "verdict, next", relieved("check", "106", "--gauge", "R-9", "--pressure", "950psi", "--temperature", "18F", "--from", "shell", "--unsigned")...)
+	r.find(coarse, `^in words +.*(no reading of this gauge could pass)`)
+	r.say("No reading of that gauge could pass, so nobody argues about one. The other type goes by its chart, for which the " +
+		"cart's gauge will do. A slip of the finger is asked about before anything is signed:")
+	chart := relieved("check", "201", "--gauge", "G-7", "--pressure", "1320psi", "--from", "shell")
+	r.run(ben, statusUsage, "chargehand", slices.Concat(chart, []string{"--temperature", "91F"})...)
+	r.find(r.do(ben, statusOK, slices.Concat(chart, []string{"--temperature", "19F"})...), `^verdict +(PASS)$`)
+}
+
+func (r *rehearsal) charging(ben, cato player) {
+	r.say("Put right, that one passes. With M-1 back, 106 is low indeed. Ben charges it, lets it settle, and signs what he found and what he left.")
+	charged := r.run(ben, statusOK, "as found, verdict, corrected, signed", relieved("charge", "106", "--gauge", "M-1", "--found", "930psi", "--found-temperature", "18F", "--found-from", "shell",
+		"--left", "1132psi", "--left-temperature", "24F", "--left-from", "shell", "--left-soak", "30m", "--bottle", "N2-3")...)
+	r.find(charged, `^as found +(fail): `)
+	r.meet(ben, cato)
+	r.say("Cato watched it done. His book meets Ben's, and he puts his own name to that entry and no other.")
+	r.run(cato, statusOK, "signed", "countersign", r.find(charged, `^signed +entry ([0-9a-f]+)`), "--meaning", "inspected")
+	r.meet(ben, cato)
+}
+
+// meet brings two books together.
+func (r *rehearsal) meet(host, guest player) (atHost, atGuest string, guestLine []string) {
+	return r.pair(host, []string{"meet", "--once", "--listen", "127.0.0.1:0"}, guest, func(output string) []string {
+		return []string{"meet", "--to", r.find(output, `^in reach +at (\S+)`)}
+	})
+}
+
+func (r *rehearsal) meeting(asha, ben, cato player) {
+	r.head("In the shelter meanwhile, laptop one alone; then they meet")
+	r.do(asha, statusOK, relieved("check", "202", "--gauge", "G-7", "--pressure", "1325psi", "--temperature", "21F", "--from", "shell")...)
+	r.say("Asha reads one unit herself. The courier brings revision B of CM-29, in force since yesterday; she enters it. She has " +
+		"not seen Ben's work, nor he the revision, when he comes back into reach.")
+	r.run(asha, statusOK, "signed", "sheet", "add", "--part", "HA-40", "--charge", "1300psi", "--minus", "75psi", "--plus", "75psi", "--at", "70F",
+		"--system-pressure", "3000psi", "--document", "CM-29", "--revision", "B", "--effective", daysOn(-1))
+	atHost, atGuest, line := r.meet(asha, ben)
+	const moved = `^moved +(HA-40/104), entry [0-9a-f]+: pass, now fail, because of CM-29 rev B`
+	r.find(atHost, moved)
+	r.find(atGuest, moved)
+	r.tell(ben, line, atGuest, "received", "sent", "moved       HA-40/104", "fingerprint")
+	r.say("Unit 104 passed by the page Ben knew and fails by the one in force. Nobody touched his entry: the revision moved the " +
+		"verdict, on both laptops, and both name it. Unit 106, as Ben left it, passes by either. Cato hears it from Ben's book.")
+	r.meet(ben, cato)
+	board := r.run(asha, statusOK, "VERDICT, fail, not read, pass", "board")
+	r.find(board, `^pass +(HA-40/106) `)
+}
+
+func (r *rehearsal) proof(asha, ben, cato player) {
+	r.head("Proof")
+	const fingerprint = `^fingerprint +([0-9a-f ]+[0-9a-f])`
+	lead := r.find(r.do(asha, statusOK, "book", "show"), fingerprint)
+	if tech := r.find(r.do(ben, statusOK, "book", "show"), fingerprint); tech != lead && r.err == nil {
+		r.err = couldNot(fmt.Errorf("after the meetings Asha's fingerprint is %s and Ben's is %s", lead, tech), "Report this; the books are in "+r.dir)
+	}
+	r.say("Asha reads out the fingerprint that her book shows, and Ben's is the same. Cato holds his copy against it; that takes no key, and no trust in any laptop.")
+	r.run(cato, statusOK, "fingerprint, checked, - entry, found  ", "audit", "--fingerprint", lead)
+	r.head("Go on from here")
+	r.say("The books stay in %s, each with its passphrase beside it. After 'go build ./cmd/chargehand', for instance:", r.dir)
+	for _, args := range [][]string{{"board"}, {"unit", "show", "HA-40/104"}, {"check", "HA-60/203"}} {
+		r.printf("%s\n", asTyped("./", slices.Concat(args, ben.own(args))))
 	}
 }
