@@ -85,19 +85,22 @@ type Odd struct {
 // oddRisk is the chance of pointing at any reading of a history in which none is odd.
 const oddRisk = 0.05
 
+// hiding is how many odd readings in a row may hide another.
+const hiding = 5
+
 // odd points at readings that the rest do not bear out, and returns the rest. It takes away the reading that is farthest from
 // what the others foretell, again and again; the largest number of readings whose last one was too far counts, so that two odd
 // readings cannot hide each other.
 //
 // Source: B. Rosner, Technometrics 25, 165 (1983), the generalised extreme studentised deviate, with the stated uncertainty or a
 // larger scatter as its scale (from memory).
-func odd(ps []Point, f *Fit, o Options) (found []Odd, rest []Point) {
-	left := slices.Clone(ps)
-	rest = ps
+func odd(f *Fit, o Options) (found []Odd, rest []Point) {
+	left := slices.Clone(f.model.ps)
 	var taken []Odd
+	m := f.model
 	// Fewer than four bearing readings cannot outvote one; more than 29 % odd ones are a matter for the technician.
-	for most := int(0.29 * float64(len(ps))); len(taken) < most && f.Standing > BudgetOnly; {
-		s, err := f.model.solve(1)
+	for most := int(0.29 * float64(len(left))); len(taken) < most && len(taken) < len(found)+hiding && m.bearing >= 4; {
+		s, err := m.solve(1)
 		if err != nil {
 			break
 		}
@@ -109,15 +112,26 @@ func odd(ps []Point, f *Fit, o Options) (found []Odd, rest []Point) {
 		}
 		z := s.left[worst]
 		// Without this reading the chi-squared is less by z^2, and so is the scatter of the others.
-		scale, freedom := widening(max(0, s.chi2-z*z), len(left)-f.model.fixed()-1)
+		scale, freedom := widening(max(0, s.chi2-z*z), len(left)-m.fixed()-1)
 		far := distuv.StudentsT{Sigma: 1, Nu: min(freedom, 1e6)}.Quantile(1 - oddRisk/2/float64(len(left)))
 		taken = append(taken, Odd{left[worst], z / scale})
 		left = slices.Delete(left, worst, worst+1)
 		if math.Abs(z) > far*scale {
 			found, rest = slices.Clone(taken), slices.Clone(left)
 		}
-		if f, err = fit(left, o); err != nil {
+		if m, err = newModel(left, o); err != nil {
 			break
+		}
+	}
+	for i := range found { // the others must not hide by how much
+		at, _ := slices.BinarySearchFunc(rest, found[i].Point, compare)
+		m, err := newModel(slices.Insert(slices.Clone(rest), at, found[i].Point), o)
+		if err != nil {
+			continue
+		}
+		if s, err := m.solve(1); err == nil {
+			scale, _ := widening(max(0, s.chi2-s.left[at]*s.left[at]), len(rest)-m.fixed())
+			found[i].By = s.left[at] / scale
 		}
 	}
 	slices.SortStableFunc(found, func(a, b Odd) int { return compare(a.Point, b.Point) })

@@ -24,6 +24,7 @@ type model struct {
 	mid      time.Time
 	half     float64 // s
 	base     float64 // Pa, taken from all pressures
+	unit     float64 // Pa, of all pressures: the mean uncertainty, so that columns are alike in size whatever the unit
 	bearing  int
 }
 
@@ -51,6 +52,7 @@ func newModel(ps []Point, o Options) (*model, error) {
 		s.n++
 		s.more = s.more || p.At.After(s.first)
 		m.base += float64(p.Pressure) / float64(len(ps))
+		m.unit += float64(p.U) / float64(len(ps))
 	}
 	for _, s := range segments {
 		if s.more {
@@ -94,14 +96,14 @@ func (m *model) row(dst []float64, p Point) {
 	}
 	dst[r] = m.x(p.At)
 	if p.Bias > 0 {
-		dst[m.fixed()+slices.Index(m.gauges, p.Gauge)] = float64(p.Bias)
+		dst[m.fixed()+slices.Index(m.gauges, p.Gauge)] = float64(p.Bias) / m.unit
 	}
 	if p.Warm != 0 {
-		dst[m.warmest()+slices.Index(m.warm, p.Gauge)] = float64(p.Warm)
+		dst[m.warmest()+slices.Index(m.warm, p.Gauge)] = float64(p.Warm) / m.unit
 	}
 }
 
-// weighted returns rows and pressures divided by scale times U, and below them a row for each column from held on that holds its
+// weighted returns rows and pressures over scale times U, and below them a row for each column from held on that holds its
 // coefficient to 0 +/- 1.
 func (m *model) weighted(scale float64, held int) (*mat.Dense, []float64) {
 	n := len(m.ps) + m.columns() - held
@@ -110,13 +112,13 @@ func (m *model) weighted(scale float64, held int) (*mat.Dense, []float64) {
 		a.Set(len(m.ps)+j-held, j, 1)
 	}
 	for i, p := range m.ps {
-		w := 1 / (scale * float64(p.U))
+		w := m.unit / (scale * float64(p.U))
 		row := a.RawRowView(i)
 		m.row(row, p)
 		for j := range row {
 			row[j] *= w
 		}
-		y[i] = (float64(p.Pressure) - m.base) * w
+		y[i] = (float64(p.Pressure) - m.base) / m.unit * w
 	}
 	return a, y
 }
@@ -125,7 +127,7 @@ func (m *model) weighted(scale float64, held int) (*mat.Dense, []float64) {
 // depends on no bias, however large.
 func (m *model) scatter() (chi2 float64, freedom int) {
 	a, y := m.weighted(1, m.warmest())
-	for j := m.fixed(); j < m.warmest(); j++ { // the size of a bias must not decide the rank
+	for j := range m.columns() { // the size of a column must not decide the rank
 		scaleColumn(a, j)
 	}
 	var svd mat.SVD
@@ -148,6 +150,9 @@ func scaleColumn(a *mat.Dense, j int) {
 	rows, _ := a.Dims()
 	for i := range rows {
 		most = max(most, math.Abs(a.At(i, j)))
+	}
+	if most == 0 {
+		return
 	}
 	for i := range rows {
 		a.Set(i, j, a.At(i, j)/most)
@@ -278,8 +283,9 @@ func fit(ps []Point, o Options) (*Fit, error) {
 	}
 	c := make([]float64, m.columns())
 	c[m.fixed()-1] = 1
-	f.Rate = Rate(f.solved.b[m.fixed()-1] / m.half)
-	f.U = Rate(math.Sqrt(f.solved.variance(c)) / m.half)
+	perSecond := m.unit / m.half
+	f.Rate = Rate(f.solved.b[m.fixed()-1] * perSecond)
+	f.U = Rate(math.Sqrt(f.solved.variance(c)) * perSecond)
 	q := Rate(f.solved.quantile(0.975))
 	f.Low, f.High = f.Rate-q*f.U, f.Rate+q*f.U
 	if f.doubted, err = m.doubted(f.Scatter, q); err != nil {
@@ -293,7 +299,7 @@ func fit(ps []Point, o Options) (*Fit, error) {
 			clear(c)
 			k := len(m.segments) + len(f.Levels)
 			c[k] = 1
-			l.Rate, l.RateU = Rate(f.solved.b[k]/m.half), Rate(math.Sqrt(f.solved.variance(c))/m.half)
+			l.Rate, l.RateU = Rate(f.solved.b[k]*perSecond), Rate(math.Sqrt(f.solved.variance(c))*perSecond)
 		}
 		f.Levels = append(f.Levels, l)
 	}
@@ -312,18 +318,18 @@ func (m *model) doubted(scale float64, q Rate) (Rate, error) {
 		return 0, err
 	}
 	k := m.fixed() - 1
-	return Rate((s.b[k] + float64(q)*math.Sqrt(max(0, s.cov.At(k, k)))) / m.half), nil
+	return Rate((s.b[k] + float64(q)*math.Sqrt(max(0, s.cov.At(k, k)))) * m.unit / m.half), nil
 }
 
 // line returns a segment's true corrected pressure at a time, with its standard uncertainty.
 func (f *Fit) line(segment string, at time.Time) (p, u quantity.GaugePressure) {
 	c := make([]float64, f.model.columns())
 	f.model.row(c, Point{At: at, Segment: segment})
-	y := f.model.base
+	y := 0.0
 	for i, b := range f.solved.b {
 		y += c[i] * b
 	}
-	return quantity.GaugePressure(y), quantity.GaugePressure(math.Sqrt(f.solved.variance(c)))
+	return quantity.GaugePressure(f.model.base + y*f.model.unit), quantity.GaugePressure(math.Sqrt(f.solved.variance(c)) * f.model.unit)
 }
 
 // root returns the root of the sum of squares.

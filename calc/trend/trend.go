@@ -145,7 +145,7 @@ func New(points []Point, o Options) (*Fit, error) {
 		f.RobustDisagrees = s < f.Low || s > f.High
 	}
 	var rest []Point
-	if f.Odd, rest = odd(ps, f, o); len(f.Odd) > 0 {
+	if f.Odd, rest = odd(f, o); len(f.Odd) > 0 {
 		if g, err := fit(rest, o); err == nil { // what is left may have no rate
 			g.Robust = theilSen(rest)
 			f.Without = g
