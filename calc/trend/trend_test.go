@@ -330,6 +330,30 @@ func TestEquivariance(t *testing.T) {
 	})
 }
 
+// Whatever is written, an answer is a number or an error says why not.
+func TestNothingThatIsNoNumberComesOut(t *testing.T) {
+	rapid.Check(t, func(rt *rapid.T) {
+		wild := func(name string, usual float64) quantity.GaugePressure {
+			return quantity.GaugePressure(rapid.OneOf(rapid.Just(usual), rapid.Just(usual), rapid.Just(usual), rapid.Just(usual), rapid.Float64(),
+				rapid.SampledFrom([]float64{0, math.NaN(), math.Inf(1), -1, 1e308, 1e9, 1e-3})).Draw(rt, name))
+		}
+		ps := drawn(rt)
+		i := rapid.IntRange(0, len(ps)-1).Draw(rt, "which")
+		ps[i].Pressure, ps[i].U, ps[i].Bias, ps[i].Warm = wild("pressure", 1e7), wild("u", 5e4), wild("b", 1e5), wild("w", 0)
+		f, err := New(ps, Options{PerSegment: rapid.Bool().Draw(rt, "per segment")})
+		if err != nil {
+			return
+		}
+		finite(rt, f)
+		if p, _ := f.Exceeds(Rate(wild("allowable", 0.1))); !(p >= 0 && p <= 1) {
+			rt.Errorf("probability %v", p)
+		}
+		if d, err := f.Forecast(wild("low", 9e6), wild("high", 1.2e7)); err == nil && d.NotBefore.Before(f.last) {
+			rt.Errorf("%+v", d)
+		}
+	})
+}
+
 func BenchmarkTrend(b *testing.B) {
 	var ps []Point
 	for i := range 200 {
