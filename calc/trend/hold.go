@@ -65,7 +65,10 @@ func (e *RoseError) Error() string {
 // error by the gauge's own temperature is one unknown coefficient, so it goes with the difference of the temperatures. Reading
 // the dial, gas temperature and ambient pressure are new each time. The equation of state is taken as new too.
 //
-// Errors: a *NotAssessableError, ErrOtherGauge, a *TooShortError unless it has failed already, a *RoseError.
+// The limit is seen when it exceeds the uncertainty of the difference, and the guard band. Charge.FreeGas gives the rate in mL/h.
+//
+// Errors: a *NotAssessableError for each reading that is none, ErrOtherGauge; and with the figures filled in for showing, a
+// *TooShortError unless the test has failed already, or a *RoseError.
 func NewHold(l calc.Limits, first, last Reading, limit HoldLimit, rule calc.Rule) (Hold, error) {
 	if last.At.Before(first.At) {
 		first, last = last, first
@@ -97,9 +100,9 @@ func NewHold(l calc.Limits, first, last Reading, limit HoldLimit, rule calc.Rule
 	switch {
 	case h.Drop < -h.U:
 		return h, &RoseError{-h.Drop, h.U}
-	case h.Allowed < h.Guard && h.Class != calc.Fail:
-		needed := time.Duration(float64(h.Guard) / float64(limit.Rate()) * 1e9)
-		return h, &TooShortError{took, needed.Round(time.Minute) + time.Minute, h.Allowed, h.U}
+	case h.Allowed < max(h.Guard, h.U) && h.Class != calc.Fail:
+		needed := min(float64(max(h.Guard, h.U))/float64(limit.Rate()), mostSpan.Seconds())
+		return h, &TooShortError{took, time.Duration(needed*1e9).Round(time.Minute) + time.Minute, h.Allowed, h.U}
 	}
 	return h, nil
 }

@@ -117,6 +117,9 @@ func TestHoldRefuses(t *testing.T) {
 	if h, err := NewHold(sheet(), soon, late, limit, calc.GuardBanded()); !errors.As(err, &short) {
 		t.Fatalf("two hours: %+v, %v", h, err)
 	}
+	if h, err := NewHold(sheet(), soon, late, limit, calc.SimpleAcceptance()); !errors.As(err, &short) {
+		t.Errorf("two hours without a guard band: %+v, %v", h, err)
+	}
 	soon, late = holdAt(t, short.Needed.Hours(), 0, 293.15, 293.15)
 	if h, err := NewHold(sheet(), soon, late, limit, calc.GuardBanded()); err != nil || h.Class != calc.Pass {
 		t.Errorf("after the %s it asked for: %v, %v", short.Needed, h.Class, err)

@@ -113,7 +113,7 @@ func odd(f *Fit, o Options) (found []Odd, rest []Point) {
 		z := s.left[worst]
 		// Without this reading the chi-squared is less by z^2, and so is the scatter of the others.
 		scale, freedom := widening(max(0, s.chi2-z*z), len(left)-m.fixed()-1)
-		far := distuv.StudentsT{Sigma: 1, Nu: min(freedom, 1e6)}.Quantile(1 - oddRisk/2/float64(len(left)))
+		far := quantile(freedom, 1-oddRisk/2/float64(len(left)))
 		taken = append(taken, Odd{left[worst], z / scale})
 		left = slices.Delete(left, worst, worst+1)
 		if math.Abs(z) > far*scale {

@@ -224,17 +224,19 @@ func leastSquares(a *mat.Dense, y []float64) (*solution, error) {
 	return s, nil
 }
 
-// quantile returns that of the solution's distribution, Student's t or normal.
-func (s *solution) quantile(p float64) float64 {
-	if math.IsInf(s.freedom, 1) {
+func (s *solution) quantile(p float64) float64 { return quantile(s.freedom, p) }
+
+// quantile returns that of Student's t, which with infinite degrees of freedom is the normal distribution.
+func quantile(freedom, p float64) float64 {
+	if math.IsInf(freedom, 1) {
 		return distuv.UnitNormal.Quantile(p)
 	}
-	return distuv.StudentsT{Sigma: 1, Nu: s.freedom}.Quantile(p)
+	return distuv.StudentsT{Sigma: 1, Nu: freedom}.Quantile(p)
 }
 
 func (s *solution) cdf(z float64) float64 {
 	if math.IsInf(s.freedom, 1) {
-		return distuv.UnitNormal.CDF(z)
+		return normal(z)
 	}
 	return distuv.StudentsT{Sigma: 1, Nu: s.freedom}.CDF(z)
 }

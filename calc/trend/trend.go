@@ -106,7 +106,8 @@ type Fit struct {
 	// Without is the fit without the odd readings; nil when there is none, or what is left is too little.
 	Without *Fit
 	Robust  *TheilSen // nil when no segment has two readings of one gauge at different times
-	// RobustDisagrees is true from six readings on when the robust slope lies outside the interval.
+	// RobustDisagrees is true from six readings on when the robust slope lies outside the interval as it would be without Scatter:
+	// a few readings then pull the line.
 	RobustDisagrees bool
 
 	doubted     Rate // High with doubt
@@ -141,8 +142,8 @@ func New(points []Point, o Options) (*Fit, error) {
 	}
 	f.Robust = theilSen(ps)
 	if f.Robust != nil && f.Standing >= Warning {
-		s := f.Robust.Slope
-		f.RobustDisagrees = s < f.Low || s > f.High
+		// The scatter that pulls a line also widens its interval, so the stated uncertainty is what counts here.
+		f.RobustDisagrees = math.Abs(float64(f.Robust.Slope-f.Rate)) > quantile(math.Inf(1), 0.975)*float64(f.U)/f.Scatter
 	}
 	var rest []Point
 	if f.Odd, rest = odd(f, o); len(f.Odd) > 0 {

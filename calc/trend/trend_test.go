@@ -6,6 +6,7 @@ import (
 	"math"
 	"math/rand/v2"
 	"reflect"
+	"slices"
 	"strings"
 	"testing"
 	"time"
@@ -213,6 +214,51 @@ func TestOddReadingsArePointedAtAndKept(t *testing.T) {
 	if !(f.Scatter > 2) || f.Without.Scatter != 1 || f.Without.U >= f.U || f.model.bearing != 12 {
 		t.Errorf("scatter %v, without %v; %v and %v psi/day", f.Scatter, f.Without.Scatter, f.U.PsiPerDay(), f.Without.U.PsiPerDay())
 	}
+}
+
+func TestRobustSlope(t *testing.T) {
+	ps := line(12, 1)
+	if f := mustFit(t, ps, Options{}); f.RobustDisagrees || math.Abs(f.Robust.Slope.PsiPerDay()+1) > 1e-9 || f.Robust.Pairs != 66 {
+		t.Errorf("%+v", f.Robust)
+	}
+	ps[11].Pressure += 200 * psi
+	f := mustFit(t, ps, Options{})
+	if !f.RobustDisagrees || math.Abs(f.Robust.Slope.PsiPerDay()+1) > 0.01 || f.Rate.PsiPerDay() < -0.5 {
+		t.Errorf("a hot last reading: %v psi/day, robust %+v", f.Rate.PsiPerDay(), f.Robust)
+	}
+	for i := range ps { // a gauge used once has no slope
+		ps[i].Gauge = fmt.Sprint("G-", i)
+	}
+	if f := mustFit(t, ps, Options{}); f.Robust != nil || f.RobustDisagrees {
+		t.Errorf("%+v", f.Robust)
+	}
+	// Source: Sen's interval from Kendall's variance, by arithmetic: 8 readings have N = 28 slopes and V = 8 x 7 x 21/18 = 65.33, so
+	// z sqrt(V) = 15.84 and the interval runs from the 6th slope to the one after the 22nd.
+	if got, all := theilSen(scattered()), slopes(scattered()); far(got.Low, all[5]) || far(got.High, all[22]) || far(got.Slope, (all[13]+all[14])/2) {
+		t.Errorf("%+v of %v", got, all)
+	}
+}
+
+func scattered() []Point {
+	ps := line(8, 1)
+	for i, e := range []quantity.GaugePressure{3, -8, 11, 2, -5, 7, -13, 4} {
+		ps[i].Pressure += e * psi
+	}
+	return ps
+}
+
+func far(a, b Rate) bool { return math.Abs(float64(a-b)) > 1e-9*math.Abs(float64(b)) }
+
+// slopes between all pairs, in order of size.
+func slopes(ps []Point) []Rate {
+	var all []Rate
+	for i, p := range ps {
+		for _, q := range ps[:i] {
+			all = append(all, Rate(float64(p.Pressure-q.Pressure)/p.At.Sub(q.At).Seconds()))
+		}
+	}
+	slices.Sort(all)
+	return all
 }
 
 func TestForecastHasTwoEndsOrNone(t *testing.T) {
