@@ -13,13 +13,14 @@ import (
 )
 
 // model is the linear model of a history: columns for the levels, for the rates, and for the gauges in units of their bias and
-// of their coefficient of temperature.
-// Time counts from the mean and in halves of the span, which keeps the columns alike in size whatever the dates.
+// of their coefficient of temperature. Time counts from the middle and in halves of the span, which keeps the columns alike in
+// size whatever the dates.
 type model struct {
 	ps       []Point
 	segments []string // in order of time
 	gauges   []string // those with a bias
 	warm     []string // those with a coefficient
+	rate     []int    // of each segment, its rate's column
 	rates    int
 	mid      time.Time
 	half     float64 // s
@@ -54,8 +55,9 @@ func newModel(ps []Point, o Options) (*model, error) {
 		m.base += float64(p.Pressure) / float64(len(ps))
 		m.unit += float64(p.U) / float64(len(ps))
 	}
+	last := m.segments[len(m.segments)-1]
 	for _, s := range segments {
-		if s.more {
+		if s.more && (!o.PerSegment || s == segments[last]) {
 			m.bearing += s.n - 1
 		}
 	}
@@ -63,12 +65,13 @@ func newModel(ps []Point, o Options) (*model, error) {
 		return nil, ErrTooFew
 	}
 	m.bearing++
-	last := m.segments[len(m.segments)-1]
-	if o.PerSegment {
-		if !segments[last].more {
-			return nil, ErrTooFew
+	// A segment at one time only has no rate of its own: its level takes up whatever rate it is given.
+	m.rate = make([]int, len(m.segments))
+	for i, name := range m.segments {
+		m.rate[i] = len(m.segments) + m.rates - 1
+		if o.PerSegment && segments[name].more && name != last {
+			m.rates++
 		}
-		m.rates = len(m.segments)
 	}
 	m.half = ps[len(ps)-1].At.Sub(ps[0].At).Seconds() / 2
 	m.mid = ps[0].At.Add(ps[len(ps)-1].At.Sub(ps[0].At) / 2)
@@ -90,11 +93,7 @@ func (m *model) row(dst []float64, p Point) {
 	clear(dst)
 	s := slices.Index(m.segments, p.Segment)
 	dst[s] = 1
-	r := len(m.segments)
-	if m.rates > 1 {
-		r += s
-	}
-	dst[r] = m.x(p.At)
+	dst[m.rate[s]] = m.x(p.At)
 	if p.Bias > 0 {
 		dst[m.fixed()+slices.Index(m.gauges, p.Gauge)] = float64(p.Bias) / m.unit
 	}
@@ -293,17 +292,15 @@ func fit(ps []Point, o Options) (*Fit, error) {
 	if f.doubted, err = m.doubted(f.Scatter, q); err != nil {
 		return nil, err
 	}
-	for _, name := range m.segments {
+	for k, name := range m.segments {
 		i := slices.IndexFunc(ps, func(p Point) bool { return p.Segment == name })
 		level, u := f.line(name, ps[i].At)
-		l := Level{Segment: name, Start: ps[i].At, At: level, U: u, Rate: f.Rate, RateU: f.U}
-		if m.rates > 1 {
-			clear(c)
-			k := len(m.segments) + len(f.Levels)
-			c[k] = 1
-			l.Rate, l.RateU = Rate(f.solved.b[k]*perSecond), Rate(math.Sqrt(f.solved.variance(c))*perSecond)
-		}
-		f.Levels = append(f.Levels, l)
+		clear(c)
+		c[m.rate[k]] = 1
+		f.Levels = append(f.Levels, Level{
+			Segment: name, Start: ps[i].At, At: level, U: u,
+			Rate: Rate(f.solved.b[m.rate[k]] * perSecond), RateU: Rate(math.Sqrt(f.solved.variance(c)) * perSecond),
+		})
 	}
 	return f, nil
 }

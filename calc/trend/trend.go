@@ -74,7 +74,8 @@ func standing(bearing int) Standing {
 
 // Options of a fit. The zero value is one rate for the unit.
 type Options struct {
-	// PerSegment gives each segment its own rate; the fit's Rate is then that of the last segment. Else all share one.
+	// PerSegment gives each segment its own rate; the fit's Rate is then that of the last segment, and only its readings bear on it.
+	// Else all share one.
 	PerSegment bool
 }
 
@@ -84,7 +85,7 @@ type Level struct {
 	Start   time.Time              // of its first reading
 	At      quantity.GaugePressure // the line there
 	U       quantity.GaugePressure // standard uncertainty, gauge bias and all
-	Rate    Rate
+	Rate    Rate                   // the unit's, or with PerSegment its own, where it has readings at two times
 	RateU   Rate
 }
 
@@ -121,9 +122,10 @@ var ErrTooFew = errors.New("no two readings lie between the same two charges at 
 
 // New fits points given in any order.
 //
-// Model: pressure = level of its segment + rate x time + bias of its gauge + its gauge's error by temperature + error;
-// the error has standard deviation U, the bias Bias, the error by temperature Warm. Generalised least squares, done as ordinary least squares with one more row for each gauge that holds its bias to
-// 0 +/- Bias, and one for its coefficient: the two are the same (Henderson's mixed-model equations; from memory), and this one needs no matrix of n x n.
+// Model: pressure = level of its segment + rate x time + bias of its gauge + its gauge's error by temperature + error; the error
+// has standard deviation U, the bias Bias, the error by temperature Warm. Generalised least squares, done as ordinary least squares
+// with one more row for each gauge that holds its bias to 0 +/- Bias, and one for its coefficient: the two are the same (Henderson's
+// mixed-model equations; from memory), and this one needs no matrix of n x n.
 //
 // Interval: normal with the stated uncertainties; when the readings of each gauge scatter more than chance explains, those
 // are widened to the scatter seen and Student's t is taken (see widening). So 95 % intervals cover the truth in 95 % of

@@ -162,6 +162,14 @@ func TestJumpsAtCharges(t *testing.T) {
 	if math.Abs(f.Levels[0].Rate.PsiPerDay()+2) > 1e-9 || math.Abs(f.Levels[1].Rate.PsiPerDay()+1) > 1e-9 || f.Rate != f.Levels[1].Rate {
 		t.Errorf("levels %+v", f.Levels)
 	}
+	if f.Standing != Warning { // six readings of twelve
+		t.Errorf("%v", f.Standing)
+	}
+	ps[3].Segment = "a reading between two charges" // it stands alone
+	g := mustFit(t, ps, Options{PerSegment: true})
+	if math.Abs(float64(g.Rate-f.Rate)) > 1e-9*math.Abs(float64(f.Rate)) || len(g.Levels) != 3 {
+		t.Errorf("levels %+v", g.Levels)
+	}
 }
 
 // Floors on readings: common practice, no source.
