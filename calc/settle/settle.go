@@ -144,7 +144,8 @@ func New(readings []Reading, o Options) (*Fit, error) {
 		useful = max(0.02*f.reading, 4*rs[len(rs)-1].U)
 	}
 	if half := (f.High - f.Low) / 2; !(half <= useful) {
-		return nil, fmt.Errorf("%w: after %s it may be anywhere within +/-%.0f Pa of %.0f Pa; read again in some minutes", ErrTooShort, f.last, float64(half), float64(f.Settled))
+		return nil, fmt.Errorf("%w: after %s it may be anywhere within +/-%.0f Pa of %.0f Pa; read again in some minutes",
+			ErrTooShort, f.last, float64(half), float64(f.Settled))
 	}
 	f.Constants, f.LearntFast, f.LearntSlow = learnt(nodes, o.Known)
 	return f, nil
@@ -204,7 +205,8 @@ func rising(rs []Reading) error {
 	}
 	if stp/math.Sqrt(stt) > 3 {
 		rise := stp / stt * (rs[len(rs)-1].After - rs[0].After).Seconds()
-		return fmt.Errorf("%w, by %.0f Pa in %s: fluid is coming in, the air is warming the unit, or it was bled and not charged", ErrRising, rise, rs[len(rs)-1].After-rs[0].After)
+		return fmt.Errorf("%w, by %.0f Pa in %s: fluid is coming in, the air is warming the unit, or it was bled and not charged",
+			ErrRising, rise, rs[len(rs)-1].After-rs[0].After)
 	}
 	return nil
 }

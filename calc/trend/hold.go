@@ -45,7 +45,8 @@ type TooShortError struct {
 }
 
 func (e *TooShortError) Error() string {
-	return fmt.Sprintf("%s is too short to see the limit: it allows a loss of %.0f Pa by then and the difference is known to +/-%.0f Pa; wait until %s after the first reading",
+	return fmt.Sprintf("%s is too short to see the limit: it allows a loss of %.0f Pa by then and the difference is known to +/-%.0f Pa; "+
+		"wait until %s after the first reading",
 		e.Took, float64(e.Drop), float64(e.U), e.Needed)
 }
 
@@ -53,7 +54,8 @@ func (e *TooShortError) Error() string {
 type RoseError struct{ By, U quantity.GaugePressure }
 
 func (e *RoseError) Error() string {
-	return fmt.Sprintf("the corrected pressure rose by %.0f Pa, more than the uncertainty of %.0f Pa: a temperature is wrong or fluid has come in; relieve the fluid side and start again",
+	return fmt.Sprintf("the corrected pressure rose by %.0f Pa, more than the uncertainty of %.0f Pa: a temperature is wrong or fluid has "+
+		"come in; relieve the fluid side and start again",
 		float64(e.By), float64(e.U))
 }
 
@@ -87,7 +89,8 @@ func NewHold(l calc.Limits, first, last Reading, limit HoldLimit, rule calc.Rule
 	if err := errors.Join(errA, errB); err != nil {
 		return Hold{}, err
 	}
-	h := Hold{First: a, Last: b, Drop: a - b, Took: took, Allowed: quantity.GaugePressure(float64(limit.Rate()) * took.Seconds()), Rate: Rate(float64(b-a) / took.Seconds())}
+	h := Hold{First: a, Last: b, Drop: a - b, Took: took, Rate: Rate(float64(b-a) / took.Seconds())}
+	h.Allowed = quantity.GaugePressure(float64(limit.Rate()) * took.Seconds())
 	h.Budget = difference(first, last, ta, tb)
 	var us []quantity.GaugePressure
 	for _, t := range h.Budget {

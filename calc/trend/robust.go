@@ -8,7 +8,8 @@ import (
 )
 
 // TheilSen is the median of the slopes between all pairs of readings of one gauge in one segment. It stays when up to 29 % of
-// the readings are wrong, however wrong.
+// the readings are wrong, however wrong. It knows nothing of a gauge's own temperature, which through a season is no chance error:
+// its interval is then too narrow, and it stands beside the fit and never in its place.
 type TheilSen struct {
 	Slope     Rate
 	Low, High Rate // 95 %, by Kendall's statistic; infinite intervals are given as the least and greatest slope

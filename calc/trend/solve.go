@@ -305,19 +305,37 @@ func fit(ps []Point, o Options) (*Fit, error) {
 	return f, nil
 }
 
-// doubted returns the upper end of the rate's interval when every bias is doubt times as large.
+// doubted returns the upper end of the rate's interval when every bias is doubt times as large, and the gauges' coefficients of
+// temperature are only allowed for and not found from the readings: an error of the gas temperature shifts the pressure and the
+// gauge's term alike, and when the temperature follows the calendar that is taken for a coefficient, and so for a leak.
 func (m *model) doubted(scale float64, q Rate) (Rate, error) {
 	d := *m
-	d.ps = slices.Clone(m.ps)
+	d.warm, d.ps = nil, slices.Clone(m.ps)
 	for i := range d.ps {
 		d.ps[i].Bias *= doubt
+		d.ps[i].Warm = 0
 	}
 	s, err := d.solve(scale)
 	if err != nil {
 		return 0, err
 	}
 	k := m.fixed() - 1
-	return Rate((s.b[k] + float64(q)*math.Sqrt(max(0, s.cov.At(k, k)))) * m.unit / m.half), nil
+	variance := max(0, s.cov.At(k, k))
+	for _, g := range m.warm { // the rate that a coefficient of one standard deviation would make
+		for i, p := range m.ps {
+			d.ps[i].Pressure = 0
+			if p.Gauge == g {
+				d.ps[i].Pressure = p.Warm
+			}
+		}
+		d.base = 0
+		w, err := d.solve(scale)
+		if err != nil {
+			return 0, err
+		}
+		variance += w.b[k] * w.b[k]
+	}
+	return Rate((s.b[k] + float64(q)*math.Sqrt(variance)) * m.unit / m.half), nil
 }
 
 // line returns a segment's true corrected pressure at a time, with its standard uncertainty.

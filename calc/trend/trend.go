@@ -189,7 +189,8 @@ func check(points []Point) error {
 		case !(p.Bias >= 0 && p.Bias <= mostPressure):
 			return fmt.Errorf("reading %d of %s has the gauge bias %v Pa; it must be 0 or more", i+1, p.At.Format(time.RFC3339), float64(p.Bias))
 		case !(math.Abs(float64(p.Warm)) <= mostPressure):
-			return fmt.Errorf("reading %d of %s has the gauge temperature error %v Pa, which is none", i+1, p.At.Format(time.RFC3339), float64(p.Warm))
+			return fmt.Errorf("reading %d of %s has the gauge temperature error %v Pa, which is none",
+				i+1, p.At.Format(time.RFC3339), float64(p.Warm))
 		}
 		if p.At.Before(lo) {
 			lo = p.At
@@ -215,8 +216,8 @@ func (f *Fit) LossBelow() Rate { return max(-f.Low, f.DetectionLimit()) }
 func (f *Fit) DetectionLimit() Rate { return (f.High - f.Low) / 2 }
 
 // LeakSeen says whether a loss may be claimed: the history is long enough, and the interval lies below zero, also when gauges may
-// be wrong by doubt times their class. So a change to a gauge at the other end of its class is no leak. With no leak it is true
-// for at most 2.5 % of histories.
+// be wrong by doubt times their class and nothing is learnt of their coefficients of temperature. So neither a change to a gauge at
+// the other end of its class nor a season is a leak. With no leak it is true for about 2.5 % of histories at most.
 func (f *Fit) LeakSeen() bool { return f.Standing >= Warning && f.High < 0 && f.doubted < 0 }
 
 // doubt is what a claim must bear in the bias of gauges: a class is a limit, and a worn gauge can lie beyond it.

@@ -60,7 +60,7 @@ func TestWeeklyReadings(t *testing.T) {
 // The generalised least squares written with the full covariance matrix, done apart from the code under test.
 func TestSameAsFullCovariance(t *testing.T) {
 	r := rand.New(rand.NewPCG(3, 4))
-	ps := invent(t, r, kind{0, 3, 3, 2, 20, "drawn"}).points
+	ps := invent(t, r, kind{0, 3, 3, 2, 20, false, "drawn"}).points
 	m, err := newModel(ps, Options{})
 	if err != nil {
 		t.Fatal(err)
