@@ -118,7 +118,7 @@ func (f *Fit) holds(r Rate) bool { return f.Low <= r && r <= f.High }
 
 // The truth is invented. 500 histories; the bar is 93 to 97 % of intervals, for the fit of all readings. The fit without the odd
 // ones is shown beside it and has no bar of its own: leaving out what was pointed at makes it too sure of itself when many are
-// odd. With one reading in ten odd the coverage over 4,000 histories is 93.1 %, so the bar of 500 lies lower there.
+// odd. Over 2,500 histories the five cover in 95.6, 95.8, 93.9, 94.5 and 96.3 %.
 func TestCoverage(t *testing.T) {
 	for name, k := range map[string]struct {
 		kind
@@ -126,7 +126,7 @@ func TestCoverage(t *testing.T) {
 	}{
 		"temperature errors, gauges changed":                 {kind{0, 4, 3, 2, 4, false, "drawn"}, 93},
 		"the same, one reading in twenty odd":                {kind{0.05, 4, 3, 2, 4, false, "drawn"}, 93},
-		"the same, one reading in ten odd":                   {kind{0.1, 4, 3, 2, 4, false, "drawn"}, 91},
+		"the same, one reading in ten odd":                   {kind{0.1, 4, 3, 2, 4, false, "drawn"}, 93},
 		"one gauge, from summer to winter":                   {kind{0, 4, 1, 0, 4, true, "drawn"}, 93},
 		"one gauge, no charge in between, one in twenty odd": {kind{0.05, 4, 1, 0, 4, false, "drawn"}, 93},
 	} {

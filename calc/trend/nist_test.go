@@ -71,8 +71,8 @@ func TestNorris(t *testing.T) {
 		}
 		level, levelU := f.line("", start)
 		s := math.Sqrt(f.solved.chi2 / 34)
-		if f.Scatter != 1 || f.Freedom != 34 {
-			t.Fatalf("scatter %v by %d", f.Scatter, f.Freedom)
+		if chi2, freedom := f.model.scatter(); f.Scatter != 1 || freedom != 34 || math.Abs(chi2-f.solved.chi2) > 1e-9 {
+			t.Fatalf("scatter %v by %v of %d", f.Scatter, chi2, freedom)
 		}
 		check := func(name string, got, want float64) {
 			t.Helper()

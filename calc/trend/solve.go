@@ -268,19 +268,13 @@ func fit(ps []Point, o Options) (*Fit, error) {
 		return nil, err
 	}
 	f := &Fit{Standing: standing(m.bearing), Scatter: 1, first: ps[0].At, last: ps[len(ps)-1].At, model: m}
-	within, total := 0.0, math.Inf(1)
-	within, f.Freedom = m.scatter()
-	if f.Standing > BudgetOnly {
-		f.Scatter, total = widening(within, f.Freedom)
-	}
-	if f.solved, err = m.solve(f.Scatter); err != nil {
+	if f.solved, err = m.solve(1); err != nil {
 		return nil, err
 	}
-	f.solved.freedom = total
-	// The chi-squared of the whole less that within gauges is that of the gauges' biases.
-	if between := len(ps) - m.fixed() - f.Freedom; between > 0 && f.Standing > BudgetOnly {
-		excess := f.solved.chi2 - within/(f.Scatter*f.Scatter)
-		f.GaugesDisagree = excess > distuv.ChiSquared{K: float64(between)}.Quantile(0.99)
+	if f.Standing > BudgetOnly {
+		if err := f.widen(); err != nil {
+			return nil, err
+		}
 	}
 	c := make([]float64, m.columns())
 	c[m.fixed()-1] = 1
@@ -303,6 +297,30 @@ func fit(ps []Point, o Options) (*Fit, error) {
 		})
 	}
 	return f, nil
+}
+
+// widen takes the scatter of the readings into account, that within each gauge or that of all about the line, whichever is more:
+// of a history with several gauges and few readings the one sees what the other does not.
+func (f *Fit) widen() error {
+	m, all := f.model, f.solved.chi2
+	within, freedom := m.scatter()
+	scale, student := widening(within, freedom)
+	// The chi-squared of all less that within gauges is that of the gauges' biases.
+	if between := len(m.ps) - m.fixed() - freedom; between > 0 {
+		f.GaugesDisagree = (all-within)/(scale*scale) > distuv.ChiSquared{K: float64(between)}.Quantile(0.99)
+	}
+	if s, t := widening(all, len(m.ps)-m.fixed()); s > scale {
+		scale, student = s, t
+	}
+	var err error
+	if scale > 1 {
+		f.Scatter = scale
+		f.solved, err = m.solve(scale)
+	}
+	if err == nil {
+		f.solved.freedom = student
+	}
+	return err
 }
 
 // doubted returns the upper end of the rate's interval when every bias is doubt times as large, and the gauges' coefficients of

@@ -96,11 +96,9 @@ type Fit struct {
 	Low, High Rate // 95 % interval
 	Standing  Standing
 	Levels    []Level // in order of time
-	// Scatter is how many times their stated uncertainty the readings of one gauge scatter, at least 1. The interval is widened
-	// by it.
+	// Scatter is how many times their stated uncertainty the readings scatter, within one gauge or altogether, whichever is more; at
+	// least 1. The interval is widened by it.
 	Scatter float64
-	// Freedom is the degrees of freedom of that scatter, 0 when the readings tell nothing of it.
-	Freedom int
 	// GaugesDisagree is true when gauges differ by more than their classes make likely (1 %).
 	GaugesDisagree bool
 	Odd            []Odd // readings that do not fit, in order of time; they are in the fit
@@ -127,8 +125,8 @@ var ErrTooFew = errors.New("no two readings lie between the same two charges at 
 // with one more row for each gauge that holds its bias to 0 +/- Bias, and one for its coefficient: the two are the same (Henderson's
 // mixed-model equations; from memory), and this one needs no matrix of n x n.
 //
-// Interval: normal with the stated uncertainties; when the readings of each gauge scatter more than chance explains, those
-// are widened to the scatter seen and Student's t is taken (see widening). So 95 % intervals cover the truth in 95 % of
+// Interval: normal with the stated uncertainties; when the readings scatter more than chance explains, those are
+// widened to the scatter seen and Student's t is taken (see widening). So 95 % intervals cover the truth in 95 % of
 // histories also when some readings are odd: the statement is for this fit of all readings, not for Without.
 //
 // Errors quote the value that cannot be used. Valid for pressures below 1 GPa and times within 200 years of one another.
