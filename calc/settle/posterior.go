@@ -326,7 +326,7 @@ func (f *Fit) Retest(after time.Duration, d quantity.GaugePressure) (Retest, err
 
 // when returns the last time at which the chance of being within d is below want: two stages of unlike sign can cross on the way.
 func (f *Fit) when(want float64, d quantity.GaugePressure) (time.Duration, error) {
-	const steps = 60
+	const steps = 36
 	at := func(i int) time.Duration { // from a second to a week
 		return time.Duration(math.Pow(mostAfter.Seconds(), float64(i)/steps) * 1e9)
 	}
