@@ -546,3 +546,21 @@ func BenchmarkJudge(b *testing.B) {
 		Judge(l, dial, r, GuardBanded())
 	}
 }
+
+// A half of a pascal is one, found from either side; by arithmetic.
+func TestStepPutsHalvesBack(t *testing.T) {
+	for _, half := range []float64{0.5, 16380284.5, 17685483.5, 1e9 + 0.5} {
+		up := quantity.GaugePressure(math.Ceil(half))
+		for _, x := range []float64{half, math.Nextafter(half, 0), math.Nextafter(half, math.Inf(1)), half * (1 - 3e-16)} {
+			if got := step(quantity.GaugePressure(x)); got != up {
+				t.Errorf("%.9f Pa becomes %v, want %v", x, got, up)
+			}
+			if got := step(quantity.GaugePressure(-x)); got != -up {
+				t.Errorf("%.9f Pa becomes %v, want %v", -x, got, -up)
+			}
+		}
+		if got := step(quantity.GaugePressure(half - 0.01)); got != up-1 {
+			t.Errorf("%.9f Pa becomes %v, want %v", half-0.01, got, up-1)
+		}
+	}
+}
