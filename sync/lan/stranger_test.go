@@ -139,7 +139,7 @@ func TestStrangerLearnsNothingFromTheWire(t *testing.T) {
 	}
 	hosts := []exposed{
 		expose(t, "Dry Creek", "Lead One", 0, lan.Options{Handle: handled, Patience: 300 * time.Millisecond}),
-		expose(t, "Hangar Two of the Northern Field", "Another Lead With A Longer Name", 150, lan.Options{Handle: handled, Patience: 300 * time.Millisecond}),
+		expose(t, "Hangar Two of the Northern Field", "Another Lead With A Longer Name", 40, lan.Options{Handle: handled, Patience: 300 * time.Millisecond}),
 	}
 	for _, x := range []struct {
 		name string
@@ -249,7 +249,7 @@ func tap(t *testing.T, to string) (at string, sent func() []byte) {
 // secret buys, until the book's secret is changed.
 func TestRetiredKeyGetsNoStream(t *testing.T) {
 	var sizes []int
-	for title, units := range map[string]int{"Dry Creek": 0, "Hangar Two of the Northern Field": 150} {
+	for title, units := range map[string]int{"Dry Creek": 0, "Hangar Two of the Northern Field": 40} {
 		cut := make(chan string, 8)
 		lead := expose(t, title, "Lead", units, lan.Options{
 			Allow: only("tech"),
