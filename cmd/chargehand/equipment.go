@@ -21,13 +21,16 @@ import (
 func readChart(name string) ([]record.ChartRow, error) {
 	f, err := os.Open(name)
 	if err != nil {
-		return nil, usageError(fmt.Sprintf("--chart %q: %v", name, err), "Name a CSV file")
+		return nil, usageError(fmt.Sprintf("--chart: %v", plainly(err)), "Name a CSV file")
 	}
 	defer f.Close()
 	r := csv.NewReader(io.LimitReader(f, 1<<20))
 	r.FieldsPerRecord, r.TrimLeadingSpace = 4, true
 	lines, err := r.ReadAll()
-	if err != nil || len(lines) < 3 {
+	if err == nil && len(lines) < 3 {
+		err = fmt.Errorf("%d rows", max(len(lines)-1, 0))
+	}
+	if err != nil {
 		return nil, usageError(fmt.Sprintf("--chart %q: not a chart of two rows or more (%v)", name, err), "Write a heading and then rows such as 70F,950psi,1000psi,1050psi")
 	}
 	var rows []record.ChartRow

@@ -1,6 +1,7 @@
 package main
 
 import (
+	"cmp"
 	"fmt"
 	"time"
 
@@ -151,6 +152,9 @@ func (r *readingForm) load(body any) error {
 
 func (r *readingForm) body(m *ledger.Meaning) (any, error) {
 	u, ambient, err := r.settle(m)
+	if err == nil {
+		err = refusePressure("pressure", r.pressure, m.Gauge(r.gauge))
+	}
 	if err != nil {
 		return nil, err
 	}
@@ -228,6 +232,11 @@ func (c *chargeForm) load(body any) error {
 
 func (c *chargeForm) body(m *ledger.Meaning) (any, error) {
 	u, ambient, err := c.settle(m)
+	for _, o := range []observation{c.found, c.left} {
+		if err == nil {
+			err = refusePressure(o.name, o.pressure, m.Gauge(c.gauge))
+		}
+	}
 	if err != nil {
 		return nil, err
 	}
@@ -329,6 +338,9 @@ func (s *sheetForm) body(m *ledger.Meaning) (any, error) {
 		}
 		b.Chart = rows
 	}
+	if err := cmp.Or(refuseTolerance("minus", s.minus), refuseTolerance("plus", s.plus)); err != nil {
+		return nil, err
+	}
 	if len(b.Chart) > 0 && b.Charge != nil {
 		return nil, usageError("a sheet has a chart or a reference charge, not both", "Give --chart, or --charge with --minus and --plus, as the manual does")
 	}
@@ -386,7 +398,7 @@ func (g *gaugeForm) body(*ledger.Meaning) (any, error) {
 	b := g.b
 	b.Span, b.Graduation, b.Calibrated, b.Due = *g.span.amount(), *g.division.amount(), g.calibrated.record(), endOfDay(g.due)
 	if b.Due.Unix <= b.Calibrated.Unix {
-		return nil, usageError(fmt.Sprintf("--due %s is not after --calibrated %s", day(b.Due), day(b.Calibrated)), "Read both off the calibration label")
+		return nil, usageError(fmt.Sprintf("--due: %q is before --calibrated %q", day(b.Due), day(b.Calibrated)), "Read both dates off the gauge's label or certificate")
 	}
 	return b, nil
 }

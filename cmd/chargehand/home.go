@@ -107,12 +107,12 @@ func (h *home) passphrase(cmd *cobra.Command, prompt string) ([]byte, error) {
 	if h.passphraseFile != "" {
 		f, err := os.Open(h.passphraseFile)
 		if err != nil {
-			return nil, usageError(fmt.Sprintf("--passphrase-file %q: %v", h.passphraseFile, err), "Name a file whose first line is the passphrase")
+			return nil, usageError("--passphrase-file: "+plainly(err).Error(), "Name a file whose first line is the passphrase")
 		}
 		defer f.Close()
 		line, err := bufio.NewReader(io.LimitReader(f, 4096)).ReadBytes('\n')
 		if err != nil && !errors.Is(err, io.EOF) {
-			return nil, err
+			return nil, usageError("--passphrase-file: "+plainly(err).Error(), "Name a file whose first line is the passphrase")
 		}
 		return bytes.TrimRight(line, "\r\n"), nil
 	}
@@ -217,7 +217,9 @@ func (s *stamp) Type() string { return "time" }
 
 func (s *stamp) Set(v string) error {
 	for _, layout := range []string{time.RFC3339, "2006-01-02T15:04Z07:00", time.DateOnly} {
-		if t, err := time.Parse(layout, v); err == nil {
+		if t, err := time.Parse(layout, v); err == nil && t.Unix() < 0 {
+			return &valueError{fmt.Sprintf("%q is before 1970", v), "Write the year as it was, such as 2031-03-04", nil}
+		} else if err == nil {
 			s.at = t
 			return nil
 		}

@@ -162,7 +162,7 @@ func newBookJoin() *cobra.Command {
 		}
 		c, err := join.Parse(code)
 		if err != nil {
-			return usageError("--code: "+err.Error(), "Ask the lead to read it out again")
+			return usageError(fmt.Sprintf("--code %q: %v", code, err), "Ask the lead to read it out again")
 		}
 		dir, err := h.folder()
 		if err != nil {
