@@ -1,6 +1,7 @@
 package calc
 
 import (
+	"errors"
 	"math"
 	"math/rand/v2"
 	"regexp"
@@ -57,6 +58,7 @@ func TestPrintedIdealExamples(t *testing.T) {
 		volumes, want, resolution float64
 	}{
 		{"FAA-H-8083-30, Charles's law: printed 865.7 psia, 851 psig", 750, 14.7, 70, 140, 1, 851, 0.05},
+		{"FAA-H-8083-30, the same with 459.67 and 14.6959 psi: recomputed", 750, 14.69595, 70 - 0.33, 140 - 0.33, 1, 851.06, 0.005},
 		{"FAA-H-8083-30, general gas law: printed 1,431 psia, 1,416.3 psig", 1000, 14.7, 60, 90, 20. / 15, 1416.3, 0.05},
 		{"NAVEDTRA 14105, ch. 11, 4 to 6 ft3: recomputed", 100, 14.7, 60, 60, 4. / 6, 61.8, 0.05},
 		{"NAVEDTRA 14105, ch. 11, 1,800 psig heated: recomputed", 1800, 14.7, 70, 130, 1, 2005.4, 0.05},
@@ -66,6 +68,22 @@ func TestPrintedIdealExamples(t *testing.T) {
 		p := IdealCorrect(quantity.Pressure(x.gauge+x.ambient), quantity.Temperature(x.from+460), quantity.Temperature(x.to+460))
 		if got := float64(p)*x.volumes - x.ambient; math.Abs(got-x.want) > x.resolution {
 			t.Errorf("%s: %.3f, want %v", x.source, got, x.want)
+		}
+	}
+}
+
+// Out of the tool's range the core says the limit: 175 K is the case of a textbook, see package gas.
+func TestCorrectNamesTheLimit(t *testing.T) {
+	for _, x := range []struct {
+		p        quantity.Pressure
+		from, to quantity.Temperature
+		want     string
+	}{
+		{10e6, 175, 293.15, "200 to 420 K"}, {10e6, 293.15, 175, "200 to 420 K"}, {10e6, 293.15, 421, "200 to 420 K"},
+		{71e6, 293.15, 293.15, "0.05 to 70 MPa"}, {0.04e6, 293.15, 293.15, "0.05 to 70 MPa"}, {69e6, 293.15, 400, "0.05 to 70 MPa"},
+	} {
+		if p, err := Correct(gas.Nitrogen(), x.p, x.from, x.to); !errors.Is(err, quantity.ErrOutOfRange) || !strings.Contains(err.Error(), x.want) || p != 0 {
+			t.Errorf("%v Pa from %v K to %v K: %v, %v; want %q", x.p, x.from, x.to, p, err, x.want)
 		}
 	}
 }
@@ -544,5 +562,23 @@ func BenchmarkJudge(b *testing.B) {
 	b.ReportAllocs()
 	for b.Loop() {
 		Judge(l, dial, r, GuardBanded())
+	}
+}
+
+// A half of a pascal is one, found from either side; by arithmetic.
+func TestStepPutsHalvesBack(t *testing.T) {
+	for _, half := range []float64{0.5, 16380284.5, 17685483.5, 1e9 + 0.5} {
+		up := quantity.GaugePressure(math.Ceil(half))
+		for _, x := range []float64{half, math.Nextafter(half, 0), math.Nextafter(half, math.Inf(1)), half * (1 - 3e-16)} {
+			if got := step(quantity.GaugePressure(x)); got != up {
+				t.Errorf("%.9f Pa becomes %v, want %v", x, got, up)
+			}
+			if got := step(quantity.GaugePressure(-x)); got != -up {
+				t.Errorf("%.9f Pa becomes %v, want %v", -x, got, -up)
+			}
+		}
+		if got := step(quantity.GaugePressure(half - 0.01)); got != up-1 {
+			t.Errorf("%.9f Pa becomes %v, want %v", half-0.01, got, up-1)
+		}
 	}
 }

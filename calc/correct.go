@@ -32,7 +32,12 @@ func IdealCorrect(p quantity.Pressure, at, to quantity.Temperature) quantity.Pre
 	return p * quantity.Pressure(to/at)
 }
 
-// step rounds a pressure that decides to whole pascals, so that laptops whose processors round differently agree.
+// grid is finer than anything that decides and coarser than what processors round differently.
+const grid = 1024
+
+// step rounds a pressure that decides to whole pascals, so that laptops whose processors round differently agree. Round inputs
+// give halves of a pascal, which one processor finds a last digit above and another below the half; so they are put back on the
+// half first.
 func step(g quantity.GaugePressure) quantity.GaugePressure {
-	return quantity.GaugePressure(math.Round(float64(g)))
+	return quantity.GaugePressure(math.Round(math.Round(float64(g)*grid) / grid))
 }

@@ -47,6 +47,7 @@ import (
 const (
 	meetProtocol = protocol.ID("/chargehand/meet/1")
 	dialTimeout  = 10 * time.Second
+	patience     = 15 * time.Second
 	announce     = 15 * time.Second // how often the laptop's own addresses are looked at
 )
 
@@ -72,7 +73,9 @@ type Options struct {
 	Found func(ctx context.Context, who record.KeyID)
 	// Handle is called for each stream that a peer opens, and closes rw. ctx ends with the host.
 	Handle func(ctx context.Context, who record.KeyID, rw io.ReadWriteCloser)
-	Log    *slog.Logger // nil: no log
+	// Patience is how long whoever connects may take to prove a key before the connection is closed; zero stands for 15 s.
+	Patience time.Duration
+	Log      *slog.Logger // nil: no log
 }
 
 // Host is this laptop on the network. Its methods may be called from several goroutines.
@@ -95,6 +98,9 @@ type Host struct {
 func Open(o Options) (_ *Host, err error) {
 	if o.Log == nil {
 		o.Log = slog.New(slog.DiscardHandler)
+	}
+	if o.Patience == 0 {
+		o.Patience = patience
 	}
 	listen := make([]ma.Multiaddr, len(o.Listen))
 	for i, s := range o.Listen {
@@ -146,7 +152,7 @@ func Open(o Options) (_ *Host, err error) {
 	if err != nil {
 		return nil, fmt.Errorf("start the network: %w", err)
 	}
-	up, err := upgrader.New([]sec.SecureTransport{secure}, muxers, o.Network.key, h.limits, gater{h})
+	up, err := upgrader.New([]sec.SecureTransport{secure}, muxers, o.Network.key, h.limits, gater{h}, upgrader.WithAcceptTimeout(o.Patience))
 	if err != nil {
 		return nil, fmt.Errorf("start the network: %w", err)
 	}
