@@ -21,7 +21,7 @@ func TestMain(m *testing.M) {
 }
 
 func TestScripts(t *testing.T) {
-	cmds := map[string]func(*testscript.TestScript, bool, []string){"status": status, "waitfor": waitFor}
+	cmds := map[string]func(*testscript.TestScript, bool, []string){"status": status, "waitfor": waitFor, "readme": readme}
 	maps.Copy(cmds, tampering)
 	testscript.Run(t, testscript.Params{
 		Dir:                 "testdata/script",
