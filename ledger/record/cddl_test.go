@@ -34,7 +34,6 @@ type (
 		file   *cddl
 		tokens []string
 		scope  scope
-		broken string
 	}
 )
 
