@@ -42,6 +42,24 @@ func (u Units) Between(low, high quantity.GaugePressure) string {
 	return number + " to " + u.Pressure(high)
 }
 
+// PerDay writes a change of pressure in a day, with two figures.
+func (u Units) PerDay(g quantity.GaugePressure) string {
+	name := cmp.Or(u.P, "psi")
+	v, err := g.InUnit(name)
+	if err != nil {
+		name = "psi"
+		v, err = g.InUnit(name)
+	}
+	if err != nil || math.IsNaN(v) || math.IsInf(v, 0) {
+		return "no rate"
+	}
+	places := 4
+	if v != 0 {
+		places = min(max(0, 1-int(math.Floor(math.Log10(math.Abs(v))))), 4)
+	}
+	return written(v, places) + " " + name + "/day"
+}
+
 // Temperature writes a temperature in whole degrees.
 func (u Units) Temperature(t quantity.Temperature) string {
 	name := cmp.Or(u.T, "F")

@@ -70,6 +70,19 @@ func (f *Fit) Forecast(low, high quantity.GaugePressure) (Forecast, error) {
 	return out, nil
 }
 
+// Line returns the fitted line at a time, of the segment that was current then, with its 95 % interval, gauge bias and all.
+func (f *Fit) Line(at time.Time) (p, low, high quantity.GaugePressure) {
+	segment := f.Levels[0].Segment
+	for _, l := range f.Levels {
+		if !l.Start.After(at) {
+			segment = l.Segment
+		}
+	}
+	p, u := f.line(segment, at)
+	q := quantity.GaugePressure(f.solved.quantile(0.975))
+	return p, p - q*u, p + q*u
+}
+
 // firstBelow returns the first time up to the horizon, seconds, at which a line or the branch of a hyperbola is below zero. Either
 // bends one way only: it crosses once for good, or dips and comes back; a dip of less than a tenth of the way is not found, and
 // the forecast then has no end.

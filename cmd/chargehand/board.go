@@ -1,6 +1,7 @@
 package main
 
 import (
+	"cmp"
 	"errors"
 	"fmt"
 	"slices"
@@ -36,8 +37,13 @@ type boardRow struct {
 	Read         string  `json:"read,omitempty"`
 	Entry        string  `json:"entry,omitempty"`
 	Next         string  `json:"next"`
-	judged       verdict.Judged
-	urgency      int
+	// What its history says of its loss of gas; absent where nothing may be claimed.
+	LossPsiPerDay *float64      `json:"loss_psi_per_day,omitempty"`
+	Loss          string        `json:"loss,omitempty"` // in words, with its interval
+	Forecast      *forecastJSON `json:"forecast,omitempty"`
+	judged        verdict.Judged
+	watched       verdict.Watched
+	urgency       int
 }
 
 func newBoard() *cobra.Command {
@@ -75,6 +81,13 @@ func newBoard() *cobra.Command {
 			if r.urgency < urgency(nil) {
 				fmt.Fprintf(cmd.OutOrStdout(), "\n%s, entry %.8s: %s\n", r.Unit, r.Entry, r.Next)
 			}
+			if r.Loss != "" {
+				fmt.Fprintf(cmd.OutOrStdout(), "\n%s: %s", r.Unit, r.Loss)
+				if c := r.watched.Forecast; c != nil {
+					fmt.Fprintf(cmd.OutOrStdout(), "; %s", forecastWords(c, in))
+				}
+				fmt.Fprintln(cmd.OutOrStdout())
+			}
 		}
 		return nil
 	}
@@ -83,7 +96,8 @@ func newBoard() *cobra.Command {
 
 func board(m *ledger.Meaning) []boardRow {
 	rows := []boardRow{}
-	for _, u := range m.Units {
+	watched, in := verdict.WatchAll(m), verdict.UnitsOf(m)
+	for i, u := range m.Units {
 		r := boardRow{Unit: unitName(u.Ref), Aircraft: u.Aircraft, Position: u.Position, Verdict: "not read yet", Next: "check it", urgency: urgency(nil)}
 		if n := len(u.Work); n > 0 {
 			id := u.Work[n-1]
@@ -96,8 +110,16 @@ func board(m *ledger.Meaning) []boardRow {
 				}
 			}
 		}
+		r.watched = watched[i]
+		if f := r.watched.Fit; f != nil && f.LeakSeen() {
+			facts := trendFacts(&r.watched, in)
+			r.LossPsiPerDay, r.Loss, r.Forecast = ptr(-*facts.PsiPerDay), facts.Leak, facts.Forecast
+		}
 		rows = append(rows, r)
 	}
-	slices.SortStableFunc(rows, func(a, b boardRow) int { return a.urgency - b.urgency })
+	// Of equal verdicts the one that is seen to lose gas goes first.
+	slices.SortStableFunc(rows, func(a, b boardRow) int {
+		return cmp.Or(a.urgency-b.urgency, cmp.Compare(min(1, len(b.Loss)), min(1, len(a.Loss))))
+	})
 	return rows
 }
