@@ -90,9 +90,10 @@ func (p *pen) line(r role, width vg.Length, dash []vg.Length, pts ...vg.Point) {
 // wrap breaks words into lines no wider than most, of about equal width.
 func wrap(sty draw.TextStyle, words string, most vg.Length) []string {
 	lines := breakLines(sty, words, most)
-	for n := len(lines); n > 1; {
+	n := len(lines)
+	for range 40 { // to an eighth of the width; words that fill a line each never make one more
 		narrower := breakLines(sty, words, most*0.95)
-		if len(narrower) > n {
+		if n < 2 || len(narrower) > n {
 			break
 		}
 		lines, most = narrower, most*0.95
@@ -245,8 +246,8 @@ func (p *pen) panel(q panel, x axis, area vg.Rectangle) {
 		}
 		if s.u > 0 {
 			a, b := at(pt{s.x, s.y - s.u}), at(pt{s.x, s.y + s.u})
-			p.keepOff(a, b)
 			a.Y, b.Y = max(a.Y, area.Min.Y), min(b.Y, area.Max.Y)
+			p.keepOff(a, b) // inside the area: a whisker can be longer than the page a thousand times
 			p.line(s.role, 1.4, nil, a, b)
 			p.line(s.role, 1.4, nil, vg.Point{X: a.X - 4, Y: a.Y}, vg.Point{X: a.X + 4, Y: a.Y})
 			p.line(s.role, 1.4, nil, vg.Point{X: b.X - 4, Y: b.Y}, vg.Point{X: b.X + 4, Y: b.Y})

@@ -435,3 +435,17 @@ type fatal interface {
 	Fatal(...any)
 	Fatalf(string, ...any)
 }
+
+// Words that each fill a line are one line each, and a whisker far longer than the page is cut at it.
+func TestNoEndlessWork(t *testing.T) {
+	long := strings.Repeat("w", 400)
+	x := Trend{Title: long + " " + long, Quantity: "charge", Unit: "bar", Readings: []Reading{
+		{When: day(0), P: 80, U: 1}, {When: day(1), P: 80.0001, U: 1}, {When: day(2), P: 80, U: 1e12}}}
+	if out := svg(t, x, Light); len(out) > 1<<20 {
+		t.Errorf("a figure of %d bytes", len(out))
+	}
+	tr := Trace{Title: "x", Unit: "bar", X: "strokes", Points: []XY{{0, 1}, {1, 1.0000001}}, Break: &Break{0.5, 1, 1e12}}
+	if out := svg(t, tr, Light); len(out) > 1<<20 {
+		t.Errorf("a figure of %d bytes", len(out))
+	}
+}
