@@ -343,3 +343,13 @@ func (f *Fit) when(want float64, d quantity.GaugePressure) (time.Duration, error
 	}
 	return 0, nil
 }
+
+// At returns the pressure that the readings let expect at a time after the charge.
+func (f *Fit) At(after time.Duration) quantity.GaugePressure {
+	p, t := 0.0, after.Seconds()
+	for i := range f.nodes {
+		n := &f.nodes[i]
+		p += n.weight * (n.mean[settled] + math.Exp(-t*n.perFast)*n.mean[fastAmplitude] + math.Exp(-t*n.perSlow)*n.mean[slowAmplitude])
+	}
+	return f.reading + quantity.GaugePressure(f.unit*p)
+}

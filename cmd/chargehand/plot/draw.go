@@ -154,10 +154,10 @@ func (f figure) draw(c draw.Canvas, s Scheme) {
 	tickRow := bottom + textSize*0.5
 	bottom += textSize*1.2 + 8
 
-	free := top - bottom - vg.Length(len(f.panels))*(textSize*1.6) - vg.Length(len(f.panels)-1)*panelGap
+	free := top - bottom - vg.Length(len(f.panels))*(textSize*2) - vg.Length(len(f.panels)-1)*panelGap
 	for i, q := range f.panels {
-		top -= textSize * 1.6
-		p.write(style(textSize, false), ink, edge, top+textSize*0.75, draw.XLeft, q.y.title)
+		top -= textSize * 2
+		p.write(style(textSize, false), ink, edge, top+textSize*1.2, draw.XLeft, q.y.title)
 		h := free * vg.Length(q.weight/weight)
 		area := vg.Rectangle{Min: vg.Point{X: left, Y: top - h}, Max: vg.Point{X: right, Y: top}}
 		p.panel(q, f.x, area)
