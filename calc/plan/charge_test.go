@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"strings"
 	"testing"
 	"time"
 
@@ -126,7 +127,7 @@ func TestSettlingTime(t *testing.T) {
 
 func TestLimits(t *testing.T) {
 	slow := example()
-	slow.Rate, slow.Duration, slow.Thermal.Gas, slow.Thermal.Shell = 0, 4*time.Hour, 5*time.Second, time.Minute
+	slow.Rate, slow.Duration, slow.Thermal.Gas, slow.Thermal.Shell = 0, 2*time.Hour, 5*time.Second, time.Minute
 	p, err := Charge(slow)
 	if err != nil {
 		t.Fatal(err)
@@ -270,6 +271,46 @@ func TestFillLaws(t *testing.T) {
 		in.Duration *= 2
 		if slower, err := Charge(in); err != nil || slower.Fill.HotStop > f.HotStop+slack {
 			t.Errorf("slower stops at %v, not below %v: %v", slower.Fill.HotStop, f.HotStop, err)
+		}
+	})
+}
+
+// Whatever is asked, what comes back is finite, or an error that names a limit.
+func TestChargeIsFinite(t *testing.T) {
+	rapid.Check(t, func(t *rapid.T) {
+		f := func(name string, low, high float64) float64 { return rapid.Float64Range(low, high).Draw(t, name) }
+		in := draw(t)
+		in.FoundAt, in.Temperature, in.Bottle.Temperature = quantity.Temperature(f("found at", 195, 340)), quantity.Temperature(f("ambient", 215, 330)), quantity.Temperature(f("bottle at", 215, 330))
+		in.Bottle.Volume, in.Bottle.Pressure = quantity.Volume(f("bottle L", 0.1, 20)*1e-3), psi(f("bottle psi", 0, 6000))
+		if rapid.Bool().Draw(t, "by rate") {
+			in.Duration, in.Rate = 0, PerMinute(psi(f("rate", 5, 3000)))
+		}
+		p, err := Charge(in)
+		if over := (*OverTarget)(nil); err != nil {
+			if !errors.Is(err, quantity.ErrOutOfRange) && !errors.As(err, &over) {
+				t.Fatal(err)
+			}
+			return
+		}
+		if (p.Fill == nil) != (p.Bottle.Supply == Short) {
+			t.Fatalf("%v with fill %v", p.Bottle.Supply, p.Fill)
+		}
+		all := fmt.Sprintf("%+v", p)
+		if p.Fill != nil {
+			all += fmt.Sprintf(" %+v %+v", *p.Fill, p.Fill.Adiabatic)
+			if p.Fill.Settled < 0 || p.Fill.StageOne < 0 {
+				t.Fatal(p.Fill.Settled, p.Fill.StageOne)
+			}
+			last := p.Fill.Trace[len(p.Fill.Trace)-1]
+			if math.Abs(float64(last.Dial-p.SettledTarget)) > float64(in.Within)*1.001 {
+				t.Errorf("settles at %v, target %v", last.Dial, p.SettledTarget)
+			}
+		}
+		if strings.Contains(all, "NaN") || strings.Contains(all, "Inf") {
+			t.Fatal(all)
+		}
+		if p.Bottle.After > max(p.Bottle.Before, p.Bottle.Reaches)+1 || p.Bottle.AfterLargest > p.Bottle.After+1 || p.Mass <= 0 {
+			t.Fatalf("%+v", p)
 		}
 	})
 }

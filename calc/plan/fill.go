@@ -164,20 +164,18 @@ func (f *filling) durationAt(rate, p0, rise float64) (float64, error) {
 		return float64(s.P) - p0 - rate*took, err
 	}
 	low, atLow := 0.0, math.Inf(1)
-	high := max(1.1*rise/rate, shortest)
-	var atHigh float64
-	for {
-		var err error
-		if atHigh, err = over(high); err != nil {
-			return 0, err
+	high := min(max(1.1*rise/rate, shortest), longest)
+	atHigh, err := over(high)
+	for err == nil && atHigh > 0 {
+		if high == longest {
+			return 0, within("duration of the fill at this rate", max(rise/rate, math.Nextafter(longest, 2*longest)), shortest, longest, "s")
 		}
-		if atHigh <= 0 {
-			break
-		}
-		if low, atLow = high, atHigh; high >= longest {
-			return 0, &quantity.RangeError{Quantity: "duration of the fill at this rate", Value: math.Inf(1), Low: shortest, High: longest, Unit: "s"}
-		}
+		low, atLow = high, atHigh
 		high = min(2*high, longest)
+		atHigh, err = over(high)
+	}
+	if err != nil {
+		return 0, err
 	}
 	// False position with the Illinois weight, by halves while the lower end is not finite.
 	for side := 0; high-low > 1e-6*high; {
