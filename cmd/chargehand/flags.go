@@ -168,6 +168,10 @@ func volume() *typed[quantity.Volume] {
 	return &typed[quantity.Volume]{kind: "volume", example: "50in3 or 820cm3", as: quantity.Written.Volume}
 }
 
+func fillRate() *typed[quantity.PressureRate] {
+	return &typed[quantity.PressureRate]{kind: "rate of pressure", example: "100psi/min or 7bar/min", as: quantity.Written.PressureRate}
+}
+
 // leakRate takes either way of stating a leak: free gas, or pressure.
 func leakRate() *typed[float64] {
 	return &typed[float64]{kind: "leak rate", example: "5mL/h of free gas, or 2psi/day", as: func(w quantity.Written) (float64, error) {

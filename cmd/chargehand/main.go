@@ -77,7 +77,7 @@ func newRoot() *cobra.Command {
 		title    string
 		commands []*cobra.Command
 	}{
-		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newSettle(), newHold(), newBoard(), newTrend()}},
+		{"At the aircraft", []*cobra.Command{newCheck(), newPlan(), newCharge(), newSettle(), newNight(), newHold(), newBoard(), newTrend()}},
 		{"What was signed", []*cobra.Command{newCountersign(), newCorrect(), newWithdraw(), newAudit()}},
 		{"The book and its laptops", []*cobra.Command{newBook(), newHand(), newMeet()}},
 		{"Equipment", []*cobra.Command{newUnit(), newGauge(), newSheet(), newBottle()}},
