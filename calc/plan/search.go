@@ -25,8 +25,7 @@ type visit struct {
 	avoid uint32
 }
 
-// score is what is better, from the first member to the last; masses in
-// steps of 10 g, so that no hose is moved for less.
+// score is what is better, from the first member to the last; masses in steps of 10 g, so that no hose is moved for less.
 type score struct {
 	completed   int
 	worth, left int64 // worth is the usable gas less the price of the connections
