@@ -110,10 +110,12 @@ type BottleUse struct {
 	Needs         *quantity.GaugePressure // least pressure of a bottle of this size and temperature; nil when above 70 MPa
 }
 
-// Fill is the charge while it is warm.
+// Fill is the charge while it is warm, as if the bottle stayed above the unit; when it suffices only with pauses, the dial stalls at its
+// pressure before the hot stop.
 type Fill struct {
 	Duration          time.Duration
 	Rate              Rate                   // mean rise of the dial
+	OverPrecedent     bool                   // faster than OxygenServicingRate, by more than a thousandth
 	HotStop           quantity.GaugePressure // stop here, so that it settles on SettledTarget
 	HotAt             quantity.Temperature   // of the gas at the stop
 	HotLow, HotHigh   quantity.GaugePressure // the hot stop with half and twice the time constant of the gas, the less first
@@ -147,7 +149,8 @@ type OverTarget struct{ Settles, Target quantity.GaugePressure }
 
 func (e *OverTarget) Error() string {
 	psi := func(g quantity.GaugePressure) float64 { v, _ := g.InUnit("psi"); return v }
-	return fmt.Sprintf("the unit settles at %.1f psi, not below its target of %.1f psi: there is nothing to add", psi(e.Settles), psi(e.Target))
+	return fmt.Sprintf("the unit settles at %.1f psi, not below its target of %.1f psi: there is nothing to add",
+		psi(e.Settles), psi(e.Target))
 }
 
 // longest is the longest fill that is followed.
@@ -280,7 +283,7 @@ func (p *ChargePlan) draw(in *ChargeInput, rho0, rhoB float64, now, target quant
 	after := func(mass float64) (quantity.GaugePressure, error) {
 		rho := gas.Density(rhoB - mass/volume)
 		if rho < floor { // then it stalls where the two are equal
-			return max(equal, min(now, in.Bottle.Pressure.Abs(in.Ambient))).Gauge(in.Ambient), nil
+			return equal.Gauge(in.Ambient), nil
 		}
 		p, err := g.Pressure(tb, rho)
 		return p.Gauge(in.Ambient), err

@@ -139,7 +139,8 @@ func TestLimits(t *testing.T) {
 		t.Fatal(err)
 	}
 	// 1 s of 600 s leaves out some heat near the start, when little gas meets the whole surface.
-	near(t, "fast fill against the insulated one, part of the rise", float64((p.Fill.Adiabatic.Stop-p.Fill.HotStop)/(p.Fill.Adiabatic.Stop-psi(1500))), 0, 0.005)
+	part := float64((p.Fill.Adiabatic.Stop - p.Fill.HotStop) / (p.Fill.Adiabatic.Stop - psi(1500)))
+	near(t, "fast fill against the insulated one, part of the rise", part, 0, 0.005)
 
 	for name, change := range map[string]func(*ChargeInput){
 		"no gas":         func(in *ChargeInput) { in.Gas = nil },
@@ -177,6 +178,41 @@ func TestLimits(t *testing.T) {
 	in.Found, in.Bottle.Pressure = psi(1000), psi(900)
 	if p, err := Charge(in); err != nil || p.Bottle.Supply != Short || p.Bottle.After != in.Bottle.Pressure || math.Abs(inPsi(p.Bottle.Reaches)-1000) > 1e-6 {
 		t.Errorf("bottle below the unit: %+v, %v", p.Bottle, err)
+	}
+}
+
+// Source: Simpson's rule over the bottle's densities, against the enthalpy that the integration brought in.
+func TestInflow(t *testing.T) {
+	in := example()
+	p, err := Charge(in)
+	if err != nil {
+		t.Fatal(err)
+	}
+	rho, err := in.Gas.Density(at20, in.Bottle.Pressure.Abs(in.Ambient))
+	if err != nil {
+		t.Fatal(err)
+	}
+	const n = 200
+	sum := 0.0
+	for i := range n + 1 {
+		s, err := in.Gas.State(at20, rho-gas.Density(p.Mass/float64(in.Bottle.Volume)*float64(i)/n))
+		if err != nil {
+			t.Fatal(err)
+		}
+		weight := 2 + 2*float64(i%2)
+		if i == 0 || i == n {
+			weight = 1
+		}
+		sum += weight * s.H
+	}
+	want := sum * p.Mass / n / 3
+	near(t, "enthalpy that came in, J", p.Fill.Energy.In, want, 1e-9*want)
+	if p.Fill.OverPrecedent {
+		t.Error("200 psi a minute counts as faster than itself")
+	}
+	in.Rate *= 1.01
+	if p, err = Charge(in); err != nil || !p.Fill.OverPrecedent {
+		t.Errorf("202 psi a minute does not count as faster: %v", err)
 	}
 }
 
@@ -280,7 +316,8 @@ func TestChargeIsFinite(t *testing.T) {
 	rapid.Check(t, func(t *rapid.T) {
 		f := func(name string, low, high float64) float64 { return rapid.Float64Range(low, high).Draw(t, name) }
 		in := draw(t)
-		in.FoundAt, in.Temperature, in.Bottle.Temperature = quantity.Temperature(f("found at", 195, 340)), quantity.Temperature(f("ambient", 215, 330)), quantity.Temperature(f("bottle at", 215, 330))
+		in.FoundAt, in.Temperature = quantity.Temperature(f("found at", 195, 340)), quantity.Temperature(f("ambient", 215, 330))
+		in.Bottle.Temperature = quantity.Temperature(f("bottle at", 215, 330))
 		in.Bottle.Volume, in.Bottle.Pressure = quantity.Volume(f("bottle L", 0.1, 20)*1e-3), psi(f("bottle psi", 0, 6000))
 		if rapid.Bool().Draw(t, "by rate") {
 			in.Duration, in.Rate = 0, PerMinute(psi(f("rate", 5, 3000)))

@@ -57,6 +57,7 @@ func (in *ChargeInput) fill(rho0, rho1, rhoB float64, target quantity.Pressure) 
 	}
 	out.HotStop, out.HotAt = hot.P.Gauge(in.Ambient), hot.T
 	out.Rate = Rate(float64(hot.P-found.P) / took)
+	out.OverPrecedent = out.Rate > 1.001*OxygenServicingRate()
 	out.Energy = Energy{In: end.in, Shell: end.shell - f.start.shell, Lost: end.lost}
 	if err := out.span(*f, took); err != nil {
 		return nil, err

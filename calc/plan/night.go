@@ -24,6 +24,7 @@ type NightInput struct {
 	Ambient     quantity.Pressure    // [20 kPa to 120 kPa]
 	Jobs        []NightJob           // [up to 200]
 	Bottles     []Bottle             // [1 to 32, each 0.1 L to 10 m3]
+	Connection  float64              // kg of usable gas that a hose connection must save to be worth the trouble [0 to 1]
 }
 
 // NightPlan is an order of use. Jobs and bottles are given by their index in the input; pressures are settled, at the cart's temperature.
@@ -34,7 +35,7 @@ type NightPlan struct {
 	Usable   float64 // kg left that still stands above the highest target of the list
 	Left     float64 // kg left in all bottles
 	Connects int     // hose connections
-	// No plan of this kind completes more than CompletedAtMost units, nor with as many as this one leaves more usable than
+	// No plan of this kind completes more than CompletedAtMost units, nor leaves, with as many as this one, more usable than
 	// UsableAtMost. Best says that all were tried, so that none is better.
 	CompletedAtMost int
 	UsableAtMost    float64
@@ -60,7 +61,7 @@ type Undone struct {
 	Job     int
 	Reaches quantity.GaugePressure  // with what is left
 	Lacks   float64                 // kg, once there
-	Size    quantity.Volume         // of the largest bottle on the cart;
+	Size    quantity.Volume         // of the largest bottle on the cart
 	Needs   *quantity.GaugePressure // one more of them does it at this pressure, used in its turn; nil when above 70 MPa
 }
 
@@ -73,17 +74,19 @@ type BottleEnd struct {
 // Night orders the work of a night. Every unit is completed before the next is begun, or left alone; it draws from a poor bottle
 // until the two are level or it is on target, then from a richer one, and from none twice. Gas only flows down.
 //
-// What is best, in this order: most units completed; most gas left usable, that is above the highest target of the whole list, where it
-// could still fill any of them; most gas left at all; fewest hose connections. Masses count in
-// steps of 10 g, about a tenth of a small charge: no hose is moved to save less. Where nothing is lost by it the order is the list's.
+// What is best, in this order: most units completed; most gas left usable, that is above the highest target of the whole list,
+// where it could still fill any of them, less the price of the hose connections; most gas left at all; fewest connections. Masses
+// count in steps of 10 g, about a tenth of a small charge. Where nothing is lost by it the order is the list's.
 //
 // Orders and choices of bottles are tried in full while they are few enough, which is the case for 5 units and 3 bottles. Beyond,
 // they are improved step by step from several starting orders, with a fixed sequence of trials, so that the same input gives the
-// same plan; the two bounds of the plan say how far from the best it can be at most.
+// same plan. Measured: on 115 invented nights of 6 to 8 units and 2 or 3 bottles, where both ways could be run, the second fell
+// short in none; on 30 scarce nights of 40 units and 8 bottles it completed 989 units, twice the trials 990, and the bounds
+// allow 1,041, since they know nothing of what is lost when unequal pressures meet. CompletedAtMost bounds the gap of each plan.
 //
-// All is isothermal with densities of the real gas, so two vessels that stand level have the same density, and what is drawn over
-// the hot stop flows while the unit cools, with the bottle still connected. Valid for 200 K to 420 K and 0.05 MPa to 70 MPa and the
-// limits of NightInput; outside, the error holds a *quantity.RangeError.
+// All is isothermal and settled, with densities of the real gas, so that two vessels that stand level have the same density: the last
+// of a charge flows while the unit cools, with the bottle connected. Hot stops and times are Charge's. Valid for 200 K to 420 K
+// and 0.05 MPa to 70 MPa and the limits of NightInput; outside, the error holds a *quantity.RangeError.
 func Night(in NightInput) (NightPlan, error) {
 	if in.Gas == nil {
 		return NightPlan{}, errors.New("the night's work names no gas")
@@ -92,10 +95,11 @@ func Night(in NightInput) (NightPlan, error) {
 		within("ambient pressure", float64(in.Ambient)/1e3, 20, 120, "kPa"),
 		within("number of units", float64(len(in.Jobs)), 0, 200, "units"),
 		within("number of bottles", float64(len(in.Bottles)), 1, 32, "bottles"),
+		within("price of a connection", in.Connection, 0, 1, "kg"),
 	); err != nil {
 		return NightPlan{}, err
 	}
-	s := search{}
+	s := search{price: in.Connection}
 	for _, j := range in.Jobs {
 		found, err0 := in.Gas.Density(in.Temperature, j.Found.Abs(in.Ambient))
 		target, err1 := in.Gas.Density(in.Temperature, j.Target.Abs(in.Ambient))

@@ -16,6 +16,7 @@ type search struct {
 	targets []float64
 	bottles []vessel
 	top     float64 // highest target
+	price   float64 // of a connection, kg
 }
 
 // visit serves one unit from the bottles whose bit in avoid is not set, the poorest first.
@@ -24,16 +25,15 @@ type visit struct {
 	avoid uint32
 }
 
-// score is what is better, from the first member to the last; masses in
-// steps of 10 g, so that no hose is moved for less.
+// score is what is better, from the first member to the last; masses in steps of 10 g, so that no hose is moved for less.
 type score struct {
-	completed    int
-	usable, left int64
-	connects     int
+	completed   int
+	worth, left int64 // worth is the usable gas less the price of the connections
+	connects    int
 }
 
 func (a score) compare(b score) int {
-	return cmp.Or(cmp.Compare(a.completed, b.completed), cmp.Compare(a.usable, b.usable), cmp.Compare(a.left, b.left), cmp.Compare(b.connects, a.connects))
+	return cmp.Or(cmp.Compare(a.completed, b.completed), cmp.Compare(a.worth, b.worth), cmp.Compare(a.left, b.left), cmp.Compare(b.connects, a.connects))
 }
 
 // outcome is a plan: the visits that complete their units.
@@ -57,7 +57,7 @@ func (s *search) score(bottles []vessel, completed, connects int) score {
 	for _, b := range bottles {
 		left += b.volume * b.rho
 	}
-	return score{completed, steps(s.usable(bottles)), steps(left), connects}
+	return score{completed, steps(s.usable(bottles) - s.price*float64(connects)), steps(left), connects}
 }
 
 // serve draws from bottles, which it changes with unit, and tells each of every draw with the unit's density after it. It returns
@@ -170,7 +170,7 @@ func factorialAbove(n, limit int) bool {
 	return false
 }
 
-// exact tries all orders, and for each visit all choices of bottles, leaving out what cannot beat the best: along a branch usable and
+// exact tries all orders, and for each visit all choices of bottles, leaving out what cannot beat the best: along a branch worth and
 // left only fall and connections only grow.
 type exact struct {
 	*search
