@@ -26,6 +26,8 @@ import (
 const (
 	usualFill  = 100 // psi/min
 	shellPerLK = 4.0 // kg of steel a litre
+
+	perConnection = 0.02 // kg of gas that moving the hose once more must save
 )
 
 type planJSON struct {
@@ -533,7 +535,7 @@ func newNight() *cobra.Command {
 
 // nightInput gathers units and bottles. One gas only: a cart carries one.
 func nightInput(m *ledger.Meaning, args, found, bottles []string, at quantity.Temperature, ambient quantity.Pressure) (plan.NightInput, []*ledger.Unit, error) {
-	n := plan.NightInput{Temperature: at, Ambient: ambient}
+	n := plan.NightInput{Temperature: at, Ambient: ambient, Connection: perConnection}
 	states := map[record.UnitRef][2]string{}
 	for _, f := range found {
 		name, state, ok := strings.Cut(f, "=")
