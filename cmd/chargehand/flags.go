@@ -168,6 +168,10 @@ func volume() *typed[quantity.Volume] {
 	return &typed[quantity.Volume]{kind: "volume", example: "50in3 or 820cm3", as: quantity.Written.Volume}
 }
 
+func flow() *typed[quantity.VolumeRate] {
+	return &typed[quantity.VolumeRate]{kind: "flow", example: "120in3/min or 2L/min", as: quantity.Written.VolumeRate}
+}
+
 // leakRate takes either way of stating a leak: free gas, or pressure.
 func leakRate() *typed[float64] {
 	return &typed[float64]{kind: "leak rate", example: "5mL/h of free gas, or 2psi/day", as: func(w quantity.Written) (float64, error) {
