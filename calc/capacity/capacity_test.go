@@ -104,6 +104,8 @@ func TestLimitsOfTheTimeConstant(t *testing.T) {
 				"short tau":      {pace(AtFlow(2*quantity.VolumeRate(inch3), time.Millisecond)), slow},
 				"long tau":       {pace(AtFlow(2*quantity.VolumeRate(inch3), 1000*time.Hour)), fast},
 				"in a day":       {pace(Within(24*time.Hour, 10*time.Second)), slow},
+				"in a month":     {pace(Within(1000*time.Hour, time.Nanosecond)), slow},
+				"in a moment":    {pace(Within(time.Nanosecond, 1000*time.Hour)), fast},
 				"in a hundredth": {pace(Within(10*time.Millisecond, 1000*time.Second)), fast},
 			} {
 				d := deliver(t, u, c, celsius(T), x.pace)

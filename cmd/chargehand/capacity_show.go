@@ -84,7 +84,7 @@ func (c *capacityAnswer) facts(unit string) capacityJSON {
 	return j
 }
 
-// picture shows the slow and fast curves. A demand at a pace in time is held against a curve between them, which its title names.
+// picture draws the curves in the book's own units.
 func (c *capacityAnswer) picture(unit string) plot.Capacity {
 	volume := func(v quantity.Volume) float64 { return show(v.InUnit(c.volumeUnit())) }
 	degrees := c.in.T
@@ -94,14 +94,20 @@ func (c *capacityAnswer) picture(unit string) plot.Capacity {
 	temperature := func(t quantity.Temperature) float64 { return show(t.InUnit(degrees)) }
 	name, curve := c.deciding()
 	w := capacity.Worst(curve)
-	p := plot.Capacity{TemperatureUnit: degrees, VolumeUnit: c.volumeUnit(), Demand: volume(c.demand), DemandWords: c.demandWords(), Worst: &plot.Worst{Temperature: temperature(w.Temperature), Volume: volume(w.Volume)}}
+	p := plot.Capacity{TemperatureUnit: degrees, VolumeUnit: c.volumeUnit(), Demand: volume(c.demand), DemandWords: c.demandWords(), Timed: c.timedName,
+		Worst: &plot.Worst{Temperature: temperature(w.Temperature), Volume: volume(w.Volume)}}
 	for i := range c.slow {
 		p.Points = append(p.Points, plot.CapacityPoint{Temperature: temperature(c.slow[i].Temperature), Slow: volume(c.slow[i].Volume), Fast: volume(c.fast[i].Volume)})
+		if c.timed != nil {
+			p.Points[i].Timed = volume(c.timed[i].Volume)
+		}
 	}
 	p.Title = fmt.Sprintf("%s: at least %s %s", unit, c.fluid(w.Volume), name)
 	switch {
 	case c.demand > 0 && c.met():
 		p.Title = fmt.Sprintf("%s: the demand is met %s", unit, name)
+	case c.demand > 0 && w.Volume >= c.demand:
+		p.Title = fmt.Sprintf("%s: the demand is not met %s by the smallest gas volume", unit, name)
 	case c.demand > 0:
 		p.Title = fmt.Sprintf("%s: the demand is not met %s at %s", unit, name, c.in.Temperature(w.Temperature))
 	}
