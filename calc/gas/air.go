@@ -42,5 +42,6 @@ var air = Model{
 		{-0.00938782884667, 15, 3, 3},
 	},
 	start:       [5]float64{3.001, -4.253, 0.401, 2.156, -1.928},
+	coldest:     140,
 	uncertainty: func(float64, float64) float64 { return 0.001 },
 }

@@ -34,7 +34,8 @@ type Model struct {
 	idealExps    []idealExp
 	terms        []term
 	gauss        []gaussian
-	start        [5]float64 // constants of isotherm.guess
+	start        [5]float64           // constants of isotherm.guess
+	coldest      quantity.Temperature // of ColdState
 	uncertainty  func(t, p float64) float64
 }
 

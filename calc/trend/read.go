@@ -9,8 +9,8 @@ import (
 	"example.org/chargehand/calc/quantity"
 )
 
-// chartReference is the temperature to which readings of a sheet with a chart are brought, since a chart holds at any: 20 degC.
-const chartReference quantity.Temperature = 293.15
+// ChartReference is the temperature to which readings of a sheet with a chart are brought, since a chart holds at any: 20 degC.
+const ChartReference quantity.Temperature = 293.15
 
 // repeatable is the part of a gauge's class by which it errs anew at each reading: friction and hysteresis with the needle come
 // to rest from one side. One fifth (common practice, no source). The rest of its error is the same each time.
@@ -62,7 +62,7 @@ func (r Reading) judge(l calc.Limits) (quantity.GaugePressure, []calc.Term, erro
 		} else {
 			l.Charge = r.Reading.Gauge
 		}
-		l.Chart, l.Reference, l.Minus, l.Plus = nil, chartReference, 0, 0
+		l.Chart, l.Reference, l.Minus, l.Plus = nil, ChartReference, 0, 0
 	}
 	v := calc.Judge(l, r.Gauge, r.Reading, calc.GuardBanded())
 	if v.Class == calc.NotAssessable {

@@ -172,6 +172,10 @@ func fillRate() *typed[quantity.PressureRate] {
 	return &typed[quantity.PressureRate]{kind: "rate of pressure", example: "100psi/min or 7bar/min", as: quantity.Written.PressureRate}
 }
 
+func flow() *typed[quantity.VolumeRate] {
+	return &typed[quantity.VolumeRate]{kind: "flow", example: "120in3/min or 2L/min", as: quantity.Written.VolumeRate}
+}
+
 // leakRate takes either way of stating a leak: free gas, or pressure.
 func leakRate() *typed[float64] {
 	return &typed[float64]{kind: "leak rate", example: "5mL/h of free gas, or 2psi/day", as: func(w quantity.Written) (float64, error) {

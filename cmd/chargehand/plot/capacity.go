@@ -10,11 +10,12 @@ type Capacity struct {
 	Points          []CapacityPoint // by temperature
 	Demand          float64         // fluid needed; 0 for none
 	DemandWords     string          // such as "5 brake applications"; "" for "demand"
+	Timed           string          // names the pace in time, such as "in 20s"; "" for none
 	Worst           *Worst
 }
 
-// CapacityPoint is the fluid delivered at a temperature: slowly (isothermal) and fast (isentropic).
-type CapacityPoint struct{ Temperature, Slow, Fast float64 }
+// CapacityPoint is the fluid delivered at a temperature: slowly (isothermal), fast (isentropic), and at a pace in time.
+type CapacityPoint struct{ Temperature, Slow, Fast, Timed float64 }
 
 // Worst is the point that decides.
 type Worst struct{ Temperature, Volume float64 }
@@ -27,7 +28,9 @@ func (c Capacity) figure() (figure, error) {
 	p.y.title = "fluid delivered, " + c.VolumeUnit
 	slow := stroke{role: mark, width: 2.6, dash: solid, label: "slow (isothermal)"}
 	fast := stroke{role: mark, width: 2.6, dash: dashed, label: "fast (isentropic)"}
+	timed := stroke{role: mark, width: 1.6, dash: solid, label: c.Timed}
 	for _, x := range c.Points {
+		timed.pts = append(timed.pts, pt{x.Temperature, x.Timed})
 		slow.pts = append(slow.pts, pt{x.Temperature, x.Slow})
 		fast.pts = append(fast.pts, pt{x.Temperature, x.Fast})
 	}
@@ -40,6 +43,9 @@ func (c Capacity) figure() (figure, error) {
 			label: fmt.Sprintf("%s: %s %s", words, number(c.Demand, figures(c.Demand)), c.VolumeUnit)})
 	}
 	p.strokes = append(p.strokes, slow, fast)
+	if c.Timed != "" {
+		p.strokes = append(p.strokes, timed)
+	}
 	f := figure{title: c.Title}
 	if w := c.Worst; w != nil {
 		p.spots = append(p.spots, spot{pt: pt{w.Temperature, w.Volume}, shape: square, role: warn,

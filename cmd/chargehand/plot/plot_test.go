@@ -45,7 +45,7 @@ func capacity() Capacity {
 	c := Capacity{Title: "At -40 F a fast application leaves 5.2 in3 less than five brake applications need", TemperatureUnit: "F", VolumeUnit: "in3",
 		Demand: 18, DemandWords: "5 brake applications", Worst: &Worst{-40, 12.8}}
 	for t := -40.; t <= 160; t += 20 {
-		c.Points = append(c.Points, CapacityPoint{t, 24.8 - 0.00012*(t-85)*(t-85), 12.8 + 0.03*(t+40) - 0.00006*(t+40)*(t+40)})
+		c.Points = append(c.Points, CapacityPoint{Temperature: t, Slow: 24.8 - 0.00012*(t-85)*(t-85), Fast: 12.8 + 0.03*(t+40) - 0.00006*(t+40)*(t+40)})
 	}
 	return c
 }
@@ -410,12 +410,12 @@ func TestAnyOtherPicture(t *testing.T) {
 	rapid.Check(t, func(rt *rapid.T) {
 		number := func(name string) float64 { return rapid.Float64Range(-50, 5000).Draw(rt, name) }
 		var tr Trace
-		var c Capacity
+		c := Capacity{Timed: rapid.SampledFrom([]string{"", "in 20 s"}).Draw(rt, "pace")}
 		x := Fill{Shell: rapid.Bool().Draw(rt, "shell"), Stop: number("stop"), HotStop: number("hot"), Settled: number("settled"), Bounds: []Bound{{Name: "no heat lost"}}}
 		for range rapid.IntRange(1, 9).Draw(rt, "n") {
 			q := XY{number("x"), number("y")}
 			tr.Points, tr.Slope, tr.Collapse = append(tr.Points, q), append(tr.Slope, XY{q.X, number("slope")}), append(tr.Collapse, XY{number("after"), q.Y})
-			c.Points = append(c.Points, CapacityPoint{q.X, q.Y, number("fast")})
+			c.Points = append(c.Points, CapacityPoint{q.X, q.Y, number("fast"), number("timed")})
 			s := Sample{q.X, q.Y, number("gas"), number("wall")}
 			x.Samples, x.Bounds[0].Points = append(x.Samples, s), append(x.Bounds[0].Points, s)
 		}
