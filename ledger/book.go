@@ -43,7 +43,8 @@ type Book struct {
 
 	mu      sync.Mutex // guards what follows, and the order of writes
 	entries []record.Verified
-	meaning *Meaning
+	held    map[record.ID]bool
+	meaning *Meaning // nil when entries came since it was taken: a meeting brings many batches, and nobody asks in between
 }
 
 // Found starts a book in dir: the key signs the founding entry, whose id is the book's.
@@ -66,8 +67,8 @@ func Found(dir string, key ed25519.PrivateKey, f record.Founding, now func() tim
 	return b, nil
 }
 
-// Open opens the book of that id in dir. A dir without entries is an empty copy, ready to merge. Every entry is verified
-// again as it is read: ErrDamaged when one does not.
+// Open opens the book of that id in dir. A dir without entries is an empty copy, ready to merge. Signatures were verified when
+// the entries came in and are not verified again; bytes that have changed since are ErrDamaged.
 func Open(dir string, id record.BookID, now func() time.Time) (*Book, error) {
 	return open(dir, id, now)
 }
@@ -78,18 +79,13 @@ func open(dir string, id record.BookID, now func() time.Time) (*Book, error) {
 		return nil, err
 	}
 	b := &Book{id: id, now: now, store: st}
-	err = st.Each(func(raw []byte) error {
-		v, err := record.Verify(slices.Clone(raw), id)
-		if err != nil {
-			return fmt.Errorf("%w: entry %d of the log does not verify: %w", ErrDamaged, len(b.entries)+1, err)
-		}
-		b.entries = append(b.entries, v)
-		return nil
-	})
-	if err != nil {
+	if b.entries, err = st.Load(id); err != nil {
 		return nil, errors.Join(err, st.Close())
 	}
-	b.meaning = Fold(id, b.entries)
+	b.held = make(map[record.ID]bool, len(b.entries))
+	for _, v := range b.entries {
+		b.held[v.ID()] = true
+	}
 	return b, nil
 }
 
@@ -103,6 +99,14 @@ func (b *Book) ID() record.BookID { return b.id }
 func (b *Book) Meaning() *Meaning {
 	b.mu.Lock()
 	defer b.mu.Unlock()
+	return b.fold()
+}
+
+// fold brings the meaning up to the entries held. The caller holds mu.
+func (b *Book) fold() *Meaning {
+	if b.meaning == nil {
+		b.meaning = Fold(b.id, b.entries)
+	}
 	return b.meaning
 }
 
@@ -110,7 +114,7 @@ func (b *Book) Meaning() *Meaning {
 func (b *Book) Frontier() []LineHead { return b.Meaning().Frontier() }
 
 // Frontier returns the newest entry of each line, sorted by key; several for a forked line.
-func (m *Meaning) Frontier() []LineHead { return m.set.heads() }
+func (m *Meaning) Frontier() []LineHead { return slices.Clone(m.set.heads) }
 
 // Fingerprint is a hash of the book's id and the frontier. Each head's id covers its whole line, so equal fingerprints mean
 // equal sets.
@@ -120,7 +124,7 @@ func (b *Book) Fingerprint() [32]byte { return b.Meaning().Fingerprint() }
 func (m *Meaning) Fingerprint() [32]byte {
 	h := sha256.New()
 	h.Write(m.Book[:])
-	for _, l := range m.set.heads() {
+	for _, l := range m.set.heads {
 		h.Write(l.Key[:])
 		h.Write(binary.BigEndian.AppendUint64(nil, l.Seq))
 		h.Write(l.ID[:])
@@ -136,8 +140,12 @@ func (b *Book) MayMeet(key record.KeyID) bool { return b.Meaning().InGoodStandin
 func (b *Book) Missing(ctx context.Context, have []LineHead) iter.Seq2[record.Verified, error] {
 	m := b.Meaning()
 	upTo := map[record.KeyID]uint64{}
+	newest := make(map[record.KeyID]uint64, len(m.set.heads))
+	for _, h := range m.set.heads {
+		newest[h.Key] = max(newest[h.Key], h.Seq)
+	}
 	for _, h := range have {
-		if n := m.set.byID[h.ID]; n == nil && m.holds(h.Key, h.Seq) {
+		if n := m.set.byID[h.ID]; n == nil && newest[h.Key] >= h.Seq {
 			upTo[h.Key] = 0 // a fork: the peer holds another entry of a number that we hold
 		} else if _, twice := upTo[h.Key]; twice {
 			upTo[h.Key] = 0
@@ -161,10 +169,6 @@ func (b *Book) Missing(ctx context.Context, have []LineHead) iter.Seq2[record.Ve
 	}
 }
 
-func (m *Meaning) holds(key record.KeyID, seq uint64) bool {
-	return slices.ContainsFunc(m.set.heads(), func(h LineHead) bool { return h.Key == key && h.Seq >= seq })
-}
-
 // Merge takes entries of others into the set. An entry that names one which is neither held nor in the batch is left out and
 // comes again with a later meeting, so the set never has gaps.
 func (b *Book) Merge(_ context.Context, entries []record.Verified) (Changes, error) {
@@ -172,8 +176,8 @@ func (b *Book) Merge(_ context.Context, entries []record.Verified) (Changes, err
 	defer b.mu.Unlock()
 	var c Changes
 	fresh := make([]record.Verified, 0, len(entries))
-	held := make(map[record.ID]bool, len(entries))
-	has := func(id record.ID) bool { return held[id] || b.meaning.set.byID[id] != nil }
+	taken := make(map[record.ID]bool, len(entries))
+	has := func(id record.ID) bool { return taken[id] || b.held[id] }
 	for _, v := range entries {
 		e := v.Entry()
 		switch {
@@ -184,7 +188,7 @@ func (b *Book) Merge(_ context.Context, entries []record.Verified) (Changes, err
 			c.Waiting++
 			continue
 		}
-		held[v.ID()] = true
+		taken[v.ID()] = true
 		fresh = append(fresh, v)
 		c.Added = append(c.Added, v.ID())
 	}
@@ -194,14 +198,21 @@ func (b *Book) Merge(_ context.Context, entries []record.Verified) (Changes, err
 	return c, b.add(fresh, true)
 }
 
-// add stores and folds. The caller holds mu, or is the only one to know b.
+// add stores entries and takes them into the set. The caller holds mu, or is the only one to know b.
 func (b *Book) add(vs []record.Verified, sync bool) error {
 	if err := b.store.Append(vs, sync); err != nil {
 		return fmt.Errorf("store %d entries: %w", len(vs), err)
 	}
-	b.entries = append(b.entries, vs...)
-	b.meaning = Fold(b.id, b.entries)
+	b.take(vs...)
+	b.meaning = nil
 	return nil
+}
+
+func (b *Book) take(vs ...record.Verified) {
+	b.entries = append(b.entries, vs...)
+	for _, v := range vs {
+		b.held[v.ID()] = true
+	}
 }
 
 // Draft is an entry before it is signed.
@@ -223,9 +234,9 @@ func (b *Book) Author(key ed25519.PrivateKey, d Draft) (record.Verified, error) 
 	}
 	me := record.KeyID(key.Public().(ed25519.PublicKey))
 	e := record.Entry{Seq: 1, Signed: recordTime(at), Clock: record.HLC{Wall: at.UnixMilli()}, Kind: d.Kind, Body: d.Body, Shown: d.Shown}
-	own := -1
-	for _, h := range b.meaning.set.heads() {
-		n := b.meaning.set.byID[h.ID]
+	own, s := -1, b.fold().set
+	for _, h := range s.heads {
+		n := s.byID[h.ID]
 		if c := n.e.Clock; c.Wall > e.Clock.Wall || c.Wall == e.Clock.Wall && c.Count >= e.Clock.Count {
 			e.Clock = record.HLC{Wall: c.Wall, Count: c.Count + 1}
 		}
@@ -237,9 +248,9 @@ func (b *Book) Author(key ed25519.PrivateKey, d Draft) (record.Verified, error) 
 		}
 		own, e.Seq, e.Prev = n.line, h.Seq+1, h.ID
 	}
-	for _, h := range b.meaning.set.heads() {
-		n := b.meaning.set.byID[h.ID]
-		if n.line != own && (own < 0 || !b.meaning.set.byID[e.Prev].hasSeen(n)) {
+	for _, h := range s.heads {
+		n := s.byID[h.ID]
+		if n.line != own && (own < 0 || !s.byID[e.Prev].hasSeen(n)) {
 			e.Seen = append(e.Seen, h.ID)
 		}
 	}
@@ -255,7 +266,8 @@ func (b *Book) Author(key ed25519.PrivateKey, d Draft) (record.Verified, error) 
 	if err := b.store.Append([]record.Verified{v}, true); err != nil {
 		return record.Verified{}, fmt.Errorf("store the entry: %w", err)
 	}
-	b.entries, b.meaning = append(b.entries, v), next
+	b.take(v)
+	b.meaning = next
 	return v, nil
 }
 

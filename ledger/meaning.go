@@ -21,6 +21,10 @@ type Meaning struct {
 	Entries  []Item    // all entries held, in display order
 	Recalls  []*Recall // that stand, in display order
 	items    map[record.ID]int
+	hands    map[record.KeyID]*Hand // by each key
+	units    map[record.UnitRef]*Unit
+	gauges   map[string]*Gauge
+	sheets   map[string][]*Sheet // by part
 	set      *set
 	roster   *roster
 	named    names
@@ -98,7 +102,7 @@ type Sheet struct {
 
 // Fold returns the meaning of the entries. Duplicates count once.
 func Fold(book record.BookID, entries []record.Verified) *Meaning {
-	m := &Meaning{Book: book, set: newSet(entries), items: map[record.ID]int{}}
+	m := &Meaning{Book: book, set: newSet(entries)}
 	m.roster = settleRoster(m.set)
 	m.named = m.set.names()
 	m.stand()
@@ -113,8 +117,10 @@ func Fold(book record.BookID, entries []record.Verified) *Meaning {
 func (m *Meaning) stand() {
 	all := append(slices.Clone(m.set.order), m.set.lost...)
 	items := make(map[record.ID]*Item, len(all))
-	for _, n := range all {
-		it := &Item{Verified: n.Verified, Body: n.body, SetAside: m.roster.aside(n)}
+	each := make([]Item, len(all))
+	for i, n := range all {
+		it := &each[i]
+		*it = Item{Verified: n.Verified, Body: n.body, SetAside: m.roster.aside(n)}
 		hand, roles, known := m.roster.rolesAt(n.key, n)
 		it.Hand = hand
 		if it.SetAside == "" {
@@ -124,6 +130,7 @@ func (m *Meaning) stand() {
 		items[n.id] = it
 	}
 	slices.SortFunc(all, compareDisplay)
+	m.Entries, m.items = make([]Item, 0, len(all)), make(map[record.ID]int, len(all))
 	for i, n := range all {
 		m.items[n.id] = i
 		m.Entries = append(m.Entries, *items[n.id])
@@ -407,13 +414,14 @@ func (m *Meaning) amend() {
 }
 
 func (m *Meaning) people() {
+	named := map[record.KeyID]*Hand{}
 	for _, g := range m.roster.grants {
-		i := slices.IndexFunc(m.Hands, func(h *Hand) bool { return h.ID == g.hand })
-		if i < 0 {
-			m.Hands = append(m.Hands, &Hand{ID: g.hand, Admitted: g.at.id})
-			i = len(m.Hands) - 1
+		h := named[g.hand]
+		if h == nil {
+			h = &Hand{ID: g.hand, Admitted: g.at.id}
+			named[g.hand] = h
+			m.Hands = append(m.Hands, h)
 		}
-		h := m.Hands[i]
 		if g.roles != nil {
 			h.Name, h.Certificate, h.Roles = g.name, g.certificate, g.roles
 		}
@@ -422,6 +430,12 @@ func (m *Meaning) people() {
 			if len(m.roster.ends[g.key]) > 0 {
 				h.Retired = append(h.Retired, g.key)
 			}
+		}
+	}
+	m.hands = map[record.KeyID]*Hand{}
+	for _, h := range slices.Backward(m.Hands) { // a key that two leads gave to two hands is the first one's
+		for _, k := range h.Keys {
+			m.hands[k] = h
 		}
 	}
 }
@@ -487,6 +501,10 @@ func (m *Meaning) equipment() {
 	slices.SortStableFunc(m.Sheets, func(a, b *Sheet) int {
 		return cmp.Or(cmp.Compare(a.Part, b.Part), cmp.Compare(a.Effective.Unix, b.Effective.Unix))
 	})
+	m.units, m.gauges, m.sheets = units, gauges, map[string][]*Sheet{}
+	for _, s := range m.Sheets {
+		m.sheets[s.Part] = append(m.sheets[s.Part], s)
+	}
 }
 
 // Item returns the entry with its standing, nil when it is not held.
@@ -506,12 +524,7 @@ func (m *Meaning) Saw(by, id record.ID) bool {
 
 // Hand returns the hand that a key belongs to, nil when nobody admitted it.
 func (m *Meaning) Hand(key record.KeyID) *Hand {
-	for _, h := range m.Hands {
-		if slices.Contains(h.Keys, key) {
-			return h
-		}
-	}
-	return nil
+	return m.hands[key]
 }
 
 // InGoodStanding tells whether a key was admitted and is not retired.
@@ -522,20 +535,12 @@ func (m *Meaning) InGoodStanding(key record.KeyID) bool {
 
 // Unit returns a unit, nil when it is not registered.
 func (m *Meaning) Unit(ref record.UnitRef) *Unit {
-	i := slices.IndexFunc(m.Units, func(u *Unit) bool { return u.Ref == ref })
-	if i < 0 {
-		return nil
-	}
-	return m.Units[i]
+	return m.units[ref]
 }
 
 // Gauge returns the gauge of that asset number, nil when it is not registered.
 func (m *Meaning) Gauge(asset string) *Gauge {
-	i := slices.IndexFunc(m.Gauges, func(g *Gauge) bool { return g.Asset == asset })
-	if i < 0 {
-		return nil
-	}
-	return m.Gauges[i]
+	return m.gauges[asset]
 }
 
 // SheetAt returns the sheet of a part in force at a time: the one of the latest effective date not after it, and of several
@@ -543,9 +548,9 @@ func (m *Meaning) Gauge(asset string) *Gauge {
 // when none is in force.
 func (m *Meaning) SheetAt(part string, at record.Time) *Sheet {
 	var in *Sheet
-	for _, s := range m.Sheets {
-		if s.Part != part || s.Effective.Unix > at.Unix {
-			continue
+	for _, s := range m.sheets[part] {
+		if s.Effective.Unix > at.Unix {
+			break
 		}
 		if in != nil {
 			now, then := m.SheetRecall(s.ID, at), m.SheetRecall(in.ID, at)

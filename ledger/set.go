@@ -22,6 +22,9 @@ type node struct {
 	prev *node
 	line int
 	past []uint64 // per line: the highest sequence in this entry's causal past, itself included
+	// while the set is sorted: the entries that name this one, and how many of those that this one names are to come
+	children []*node
+	waits    int
 	// fault is why the entry cannot stand whoever signed it: something it names is missing, or its line is forked.
 	fault string
 }
@@ -36,7 +39,8 @@ type set struct {
 	lines [][]*node // by line, by sequence; a fork has several nodes of one sequence
 	forks []uint64  // by line: the lowest sequence that several entries carry, 0 for none
 	order []*node
-	lost  []*node // entries of which an ancestor is missing
+	lost  []*node    // entries of which an ancestor is missing
+	heads []LineHead // entries that no other of their line follows, by key and id
 }
 
 func newSet(entries []record.Verified) *set {
@@ -53,6 +57,7 @@ func newSet(entries []record.Verified) *set {
 	for _, n := range s.order {
 		n.past = s.pastOf(n)
 	}
+	s.heads = s.findHeads()
 	return s
 }
 
@@ -101,34 +106,39 @@ func (r *ready) Pop() any {
 // sort puts causes before effects; where neither caused the other, the display order decides. Entries below a missing
 // ancestor are lost until it arrives.
 func (s *set) sort() {
-	children := make(map[record.ID][]*node, len(s.byID))
-	waits := make(map[*node]int, len(s.byID))
 	var free ready
 	for _, l := range s.lines {
 		for _, n := range l {
-			for _, p := range parents(n) {
-				children[p] = append(children[p], n)
-				waits[n]++
+			for _, id := range parents(n) {
+				if p := s.byID[id]; p != nil {
+					p.children = append(p.children, n)
+				}
+				n.waits++
 			}
-			if waits[n] == 0 {
+			if n.waits == 0 {
 				free = append(free, n)
 			}
 		}
 	}
 	heap.Init(&free)
+	s.order = make([]*node, 0, len(s.byID))
 	for free.Len() > 0 {
 		n := heap.Pop(&free).(*node)
 		s.order = append(s.order, n)
-		delete(waits, n)
-		for _, c := range children[n.id] {
-			if waits[c]--; waits[c] == 0 {
+		for _, c := range n.children {
+			if c.waits--; c.waits == 0 {
 				heap.Push(&free, c)
 			}
 		}
+		n.children = nil
 	}
-	for n := range waits {
-		n.fault = "an entry that it builds on is missing"
-		s.lost = append(s.lost, n)
+	for _, l := range s.lines {
+		for _, n := range l {
+			if n.waits > 0 {
+				n.fault = "an entry that it builds on is missing"
+				s.lost = append(s.lost, n)
+			}
+		}
 	}
 	slices.SortFunc(s.lost, compareDisplay)
 }
@@ -159,8 +169,7 @@ func (s *set) pastOf(n *node) []uint64 {
 	return past
 }
 
-// heads returns the entries that no other of their line follows, by key and id.
-func (s *set) heads() []LineHead {
+func (s *set) findHeads() []LineHead {
 	var hs []LineHead
 	for _, l := range s.lines {
 		followed := map[record.ID]bool{}

@@ -28,7 +28,9 @@ func EncodeBody(kind Kind, body any) ([]byte, error) {
 }
 
 // DecodeBody reads the body of a kind, strictly. A kind that is not known gives Unknown.
-func DecodeBody(kind Kind, raw []byte) (any, error) {
+func DecodeBody(kind Kind, raw []byte) (any, error) { return decodeBody(kind, raw, strict) }
+
+func decodeBody(kind Kind, raw []byte, read func([]byte, any) error) (any, error) {
 	empty, known := newBody[kind]
 	if !known {
 		if err := checkUnknown(raw); err != nil {
@@ -37,7 +39,7 @@ func DecodeBody(kind Kind, raw []byte) (any, error) {
 		return Unknown{slices.Clone(raw)}, nil
 	}
 	into := empty()
-	if err := strict(raw, into); err != nil {
+	if err := read(raw, into); err != nil {
 		return nil, err
 	}
 	body := reflect.ValueOf(into).Elem().Interface()

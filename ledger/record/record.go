@@ -67,6 +67,7 @@ var (
 	ErrNotCanonical = errors.New("the entry is not in its one deterministic encoding") // a key is missing, too long, out of order
 	ErrSignature    = errors.New("the signature does not fit the entry and this book")
 	ErrWrongBook    = errors.New("the entry founds another book")
+	ErrChanged      = errors.New("the entry is not as it was stored")
 	ErrWeakKey      = errors.New("the key is not a full-strength Ed25519 public key")
 )
 
@@ -90,7 +91,8 @@ type Shown struct {
 	Core      string
 }
 
-// Verified is an entry whose bytes and signature were found right. Only Verify, VerifyFounding and Sign make one.
+// Verified is an entry whose bytes and signature were found right. Verify, VerifyFounding and Sign make one, and Restore makes it
+// again.
 type Verified struct {
 	raw   []byte
 	id    ID
@@ -162,11 +164,18 @@ func must[T any](v T, err error) T {
 	return v
 }
 
+func decode(data []byte, into any) error {
+	if err := decoding.Unmarshal(data, into); err != nil {
+		return fmt.Errorf("%w: %w", ErrMalformed, err)
+	}
+	return nil
+}
+
 // strict decodes and requires that encoding the result gives the same bytes: options alone let long integers and unsorted
 // keys through.
 func strict(data []byte, into any) error {
-	if err := decoding.Unmarshal(data, into); err != nil {
-		return fmt.Errorf("%w: %w", ErrMalformed, err)
+	if err := decode(data, into); err != nil {
+		return err
 	}
 	again, err := encoding.Marshal(into)
 	if err != nil {
@@ -256,46 +265,70 @@ func VerifyFounding(raw []byte) (Verified, error) {
 }
 
 func verify(raw []byte, book BookID) (Verified, error) {
-	if len(raw) > MaxSize {
-		return Verified{}, ErrTooLarge
-	}
-	if len(raw) == 0 || raw[0] != coseSign1 {
-		return Verified{}, fmt.Errorf("%w: it is not a COSE_Sign1 message", ErrMalformed)
-	}
-	var m message
-	if err := strict(raw[1:], &m); err != nil {
-		return Verified{}, err
-	}
-	var h header
-	if err := strict(m.Protected, &h); err != nil {
-		return Verified{}, fmt.Errorf("protected header: %w", err)
-	}
-	if h.Alg != algEdDSA || h.Type != contentType {
-		return Verified{}, fmt.Errorf("%w: algorithm %d and type %q; only EdDSA (-8) and %q are taken", ErrMalformed, h.Alg, h.Type, contentType)
-	}
-	var p payload
-	if err := strict(m.Payload, &p); err != nil {
-		return Verified{}, fmt.Errorf("payload: %w", err)
-	}
-	e := Entry{Seq: p.Seq, Prev: p.Prev, Seen: p.Seen, Signed: p.Signed, Clock: p.Clock, Kind: p.Kind, Shown: p.Shown}
-	if err := e.check(); err != nil {
-		return Verified{}, err
-	}
-	var err error
-	if e.Body, err = DecodeBody(p.Kind, p.Body); err != nil {
-		return Verified{}, fmt.Errorf("%s: %w", p.Kind, err)
-	}
-	if err := CheckKey(h.Kid); err != nil {
-		return Verified{}, err
-	}
-	tbs, err := toBeSigned(m.Protected, external(book, p.Kind), m.Payload)
+	v, m, tbs, err := parse(raw, book, strict)
 	if err != nil {
 		return Verified{}, err
 	}
-	if !ed25519.Verify(h.Kid[:], tbs, m.Signature[:]) {
+	if err := CheckKey(v.key); err != nil {
+		return Verified{}, err
+	}
+	if !ed25519.Verify(v.key[:], tbs, m.Signature[:]) {
 		return Verified{}, ErrSignature
 	}
-	return Verified{raw: raw, id: sha256.Sum256(tbs), key: h.Kid, entry: e}, nil
+	return v, nil
+}
+
+// Restore returns an entry that was Verified before it was stored, without verifying its signature again. It is for the
+// store only, which keeps the SHA-256 of an entry's bytes apart from them: sum is that hash, and the same bytes need no second
+// proof. Bytes that differ from those are ErrChanged. Restore keeps raw, which must not be changed afterwards.
+func Restore(raw []byte, sum [sha256.Size]byte, book BookID) (Verified, error) {
+	if sha256.Sum256(raw) != sum {
+		return Verified{}, ErrChanged
+	}
+	v, _, _, err := parse(raw, book, decode)
+	if err == nil && v.entry.Kind == KindFounding && BookID(v.id) != book {
+		return Verified{}, ErrWrongBook
+	}
+	return v, err
+}
+
+// parse reads an entry's bytes with read, strict or decode, and returns also its message and what is signed.
+func parse(raw []byte, book BookID, read func([]byte, any) error) (Verified, message, []byte, error) {
+	fail := func(err error) (Verified, message, []byte, error) { return Verified{}, message{}, nil, err }
+	if len(raw) > MaxSize {
+		return fail(ErrTooLarge)
+	}
+	if len(raw) == 0 || raw[0] != coseSign1 {
+		return fail(fmt.Errorf("%w: it is not a COSE_Sign1 message", ErrMalformed))
+	}
+	var m message
+	if err := read(raw[1:], &m); err != nil {
+		return fail(err)
+	}
+	var h header
+	if err := read(m.Protected, &h); err != nil {
+		return fail(fmt.Errorf("protected header: %w", err))
+	}
+	if h.Alg != algEdDSA || h.Type != contentType {
+		return fail(fmt.Errorf("%w: algorithm %d and type %q; only EdDSA (-8) and %q are taken", ErrMalformed, h.Alg, h.Type, contentType))
+	}
+	var p payload
+	if err := read(m.Payload, &p); err != nil {
+		return fail(fmt.Errorf("payload: %w", err))
+	}
+	e := Entry{Seq: p.Seq, Prev: p.Prev, Seen: p.Seen, Signed: p.Signed, Clock: p.Clock, Kind: p.Kind, Shown: p.Shown}
+	if err := e.check(); err != nil {
+		return fail(err)
+	}
+	var err error
+	if e.Body, err = decodeBody(p.Kind, p.Body, read); err != nil {
+		return fail(fmt.Errorf("%s: %w", p.Kind, err))
+	}
+	tbs, err := toBeSigned(m.Protected, external(book, p.Kind), m.Payload)
+	if err != nil {
+		return fail(err)
+	}
+	return Verified{raw: raw, id: sha256.Sum256(tbs), key: h.Kid, entry: e}, m, tbs, nil
 }
 
 // CheckKey refuses what is not the canonical encoding of a point outside the small subgroup: with such a key one signature

@@ -4,9 +4,12 @@
 // # Keys
 //
 //	f                      format number of the store, and the book's id
-//	e <key:32> <seq:8> <id:8>   one entry's bytes as received, in line order (two ids at one seq are a fork)
-//	i <id:32>              where the entry stands: key, seq
+//	e <key:32> <seq:8> <sum:32>  one entry's bytes as received, in line order (two at one seq are a fork); sum is their SHA-256
+//	i <id:32>              the key above
 //	v <name>               a derived view; may be thrown away and rebuilt from the entries alone
+//
+// The sum says what was verified before it was stored, so that Load need not verify a signature again and still notices any
+// change. A row that an older version wrote has the first 8 bytes of the id instead: Load verifies it in full.
 //
 // One transaction holds an entry and its index row, so neither is ever found without the other. An entry is reported as
 // signed only after Append returned with sync true: its bytes have then been synced to the disk. Merged batches are written
@@ -16,14 +19,18 @@ package store
 
 import (
 	"bytes"
+	"crypto/sha256"
 	"encoding/binary"
 	"errors"
+	"fmt"
 	"os"
+	"runtime"
 	"strings"
 	"syscall"
 
 	"github.com/dgraph-io/badger/v4"
 	"github.com/dgraph-io/badger/v4/options"
+	"golang.org/x/sync/errgroup"
 
 	"example.org/chargehand/ledger/record"
 )
@@ -116,13 +123,15 @@ func translate(err error) error {
 }
 
 func entryKey(v record.Verified) []byte {
-	k, id, e := v.Key(), v.ID(), v.Entry()
-	b := make([]byte, 0, 49)
+	k, sum := v.Key(), sha256.Sum256(v.Raw())
+	b := make([]byte, 0, entryKeySize)
 	b = append(b, 'e')
 	b = append(b, k[:]...)
-	b = binary.BigEndian.AppendUint64(b, e.Seq)
-	return append(b, id[:8]...)
+	b = binary.BigEndian.AppendUint64(b, v.Entry().Seq)
+	return append(b, sum[:]...)
 }
+
+const entryKeySize = 1 + 32 + 8 + sha256.Size
 
 func idKey(id record.ID) []byte { return append([]byte{'i'}, id[:]...) }
 
@@ -199,6 +208,46 @@ func (s *Store) Raw(id record.ID) ([]byte, error) {
 	return out, translate(err)
 }
 
+// Load returns every entry, line by line and each line by its sequence. The error is ErrDamaged when the bytes of one are not
+// those that were verified.
+func (s *Store) Load(book record.BookID) ([]record.Verified, error) {
+	type row struct {
+		raw []byte
+		sum []byte // nil in a row of an older version
+	}
+	var rows []row
+	err := s.scan([]byte{'e'}, []byte{'e'}, func(key, raw []byte) error {
+		r := row{raw: bytes.Clone(raw)}
+		if len(key) == entryKeySize {
+			r.sum = bytes.Clone(key[entryKeySize-sha256.Size:])
+		}
+		rows = append(rows, r)
+		return nil
+	})
+	if err != nil {
+		return nil, err
+	}
+	out := make([]record.Verified, len(rows))
+	var g errgroup.Group
+	workers := runtime.GOMAXPROCS(0)
+	for w := range workers {
+		g.Go(func() (err error) {
+			for i := w; i < len(rows); i += workers {
+				if rows[i].sum == nil {
+					out[i], err = record.Verify(rows[i].raw, book)
+				} else {
+					out[i], err = record.Restore(rows[i].raw, [sha256.Size]byte(rows[i].sum), book)
+				}
+				if err != nil {
+					return fmt.Errorf("%w: entry %d of the log does not verify: %w", ErrDamaged, i+1, err)
+				}
+			}
+			return nil
+		})
+	}
+	return out, g.Wait()
+}
+
 // Each calls f with the bytes of every entry, line by line and each line by its sequence. The slice is f's only during the
 // call. An error of f ends the walk and is returned.
 func (s *Store) Each(f func(raw []byte) error) error { return s.walk([]byte{'e'}, []byte{'e'}, f) }
@@ -210,11 +259,15 @@ func (s *Store) Line(key record.KeyID, from uint64, f func(raw []byte) error) er
 }
 
 func (s *Store) walk(prefix, start []byte, f func([]byte) error) error {
+	return s.scan(prefix, start, func(_, raw []byte) error { return f(raw) })
+}
+
+func (s *Store) scan(prefix, start []byte, f func(key, value []byte) error) error {
 	return translate(s.db.View(func(t *badger.Txn) error {
 		it := t.NewIterator(badger.IteratorOptions{Prefix: prefix, PrefetchValues: true, PrefetchSize: 100})
 		defer it.Close()
 		for it.Seek(start); it.Valid(); it.Next() {
-			if err := it.Item().Value(f); err != nil {
+			if err := it.Item().Value(func(value []byte) error { return f(it.Item().Key(), value) }); err != nil {
 				return err
 			}
 		}
@@ -224,17 +277,8 @@ func (s *Store) walk(prefix, start []byte, f func([]byte) error) error {
 
 // Views calls f with each derived view whose name begins with prefix. The slice is f's only during the call.
 func (s *Store) Views(prefix string, f func(name string, data []byte) error) error {
-	return translate(s.db.View(func(t *badger.Txn) error {
-		it := t.NewIterator(badger.IteratorOptions{Prefix: []byte("v" + prefix), PrefetchValues: true, PrefetchSize: 100})
-		defer it.Close()
-		for it.Rewind(); it.Valid(); it.Next() {
-			name := string(it.Item().Key()[1:])
-			if err := it.Item().Value(func(data []byte) error { return f(name, data) }); err != nil {
-				return err
-			}
-		}
-		return nil
-	}))
+	rows := []byte("v" + prefix)
+	return s.scan(rows, rows, func(key, data []byte) error { return f(string(key[1:]), data) })
 }
 
 // SetViews replaces derived views, a view of no bytes by none. Not all at once: whoever needs to know that all are there writes a
