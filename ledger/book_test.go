@@ -307,6 +307,7 @@ func TestAnyOrderOfArrivalGivesOneMeaning(t *testing.T) {
 			}
 		}
 		want := describe(lead.Meaning())
+		lookedUp(rt, lead.Meaning())
 		var entries []record.Verified
 		for _, it := range lead.Meaning().Entries {
 			entries = append(entries, it.Verified)
@@ -323,6 +324,31 @@ func TestAnyOrderOfArrivalGivesOneMeaning(t *testing.T) {
 			}
 		}
 	})
+}
+
+// lookedUp checks that what is looked up is what the lists hold.
+func lookedUp(t failer, m *ledger.Meaning) {
+	t.Helper()
+	for _, h := range m.Hands {
+		for _, k := range h.Keys {
+			if first := m.Hands[slices.IndexFunc(m.Hands, func(h *ledger.Hand) bool { return slices.Contains(h.Keys, k) })]; m.Hand(k) != first {
+				t.Fatalf("hand of key %s: not the first that has it", k.Short())
+			}
+		}
+	}
+	for _, u := range m.Units {
+		if m.Unit(u.Ref) != u {
+			t.Fatalf("unit %v is not found", u.Ref)
+		}
+	}
+	for _, g := range m.Gauges {
+		if m.Gauge(g.Asset) != g {
+			t.Fatalf("gauge %s is not found", g.Asset)
+		}
+	}
+	if m.Unit(record.UnitRef{Part: "none", Serial: "none"}) != nil || m.Gauge("none") != nil || m.Hand(record.KeyID{}) != nil {
+		t.Fatalf("found what is not there")
+	}
 }
 
 // describe puts into words all that laptops must agree on.

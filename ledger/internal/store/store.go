@@ -1,20 +1,17 @@
 // Package store keeps verified entries and derived views of one book in Badger. It is the only importer of Badger, and
-// takes nothing but record.Verified, which only record.Verify and record.Sign can make.
+// takes nothing but record.Verified, which only record.Verify and record.Sign can make and record.Restore makes again.
 //
 // # Keys
 //
-//	f                      format number of the store, and the book's id
 //	e <key:32> <seq:8> <sum:32>  one entry's bytes as received, in line order (two at one seq are a fork); sum is their SHA-256
-//	i <id:32>              the key above
-//	v <name>               a derived view; may be thrown away and rebuilt from the entries alone
+//	v <name>                     a derived view; may be thrown away and rebuilt from the entries alone
 //
 // The sum says what was verified before it was stored, so that Load need not verify a signature again and still notices any
 // change. A row that an older version wrote has the first 8 bytes of the id instead: Load verifies it in full.
 //
-// One transaction holds an entry and its index row, so neither is ever found without the other. An entry is reported as
-// signed only after Append returned with sync true: its bytes have then been synced to the disk. Merged batches are written
-// without a sync each and synced once at the end of the batch. After a kill or a power cut Badger replays its own log at
-// the next open; nothing that was synced is lost.
+// Badger itself holds a number for this layout, see magic. An entry is reported as signed only after Append returned with sync
+// true: its bytes have then been synced to the disk. Merged batches are written without a sync each and synced once at the end of
+// the batch. After a kill or a power cut Badger replays its own log at the next open; nothing that was synced is lost.
 package store
 
 import (
@@ -40,7 +37,6 @@ var (
 	ErrBusy    = errors.New("another process holds this book")
 	ErrDamaged = errors.New("the store is damaged")
 	ErrFull    = errors.New("no space is left on the disk")
-	ErrAbsent  = errors.New("no such entry")
 )
 
 // magic is refused by Badger at open when it differs: the layout of the keys above.
@@ -133,8 +129,6 @@ func entryKey(v record.Verified) []byte {
 
 const entryKeySize = 1 + 32 + 8 + sha256.Size
 
-func idKey(id record.ID) []byte { return append([]byte{'i'}, id[:]...) }
-
 // A transaction of Badger takes up to 15 % of the memtable; these stay well inside it.
 const (
 	txnEntries = 1000
@@ -155,7 +149,7 @@ func (s *Store) Append(entries []record.Verified, sync bool) error {
 			k := entryKey(v)
 			raw := v.Raw()
 			size += len(raw)
-			if err := errors.Join(t.Set(k, raw), t.Set(idKey(v.ID()), k)); err != nil {
+			if err := t.Set(k, raw); err != nil {
 				t.Discard()
 				return translate(err)
 			}
@@ -171,43 +165,6 @@ func (s *Store) Append(entries []record.Verified, sync bool) error {
 	return nil
 }
 
-// Has tells whether the entry is held.
-func (s *Store) Has(id record.ID) (bool, error) {
-	err := s.db.View(func(t *badger.Txn) error {
-		_, err := t.Get(idKey(id))
-		return err
-	})
-	if errors.Is(err, badger.ErrKeyNotFound) {
-		return false, nil
-	}
-	return err == nil, translate(err)
-}
-
-// Raw returns the bytes of one entry, or ErrAbsent.
-func (s *Store) Raw(id record.ID) ([]byte, error) {
-	var out []byte
-	err := s.db.View(func(t *badger.Txn) error {
-		row, err := t.Get(idKey(id))
-		if err != nil {
-			return err
-		}
-		k, err := row.ValueCopy(nil)
-		if err != nil {
-			return err
-		}
-		item, err := t.Get(k)
-		if err != nil {
-			return err
-		}
-		out, err = item.ValueCopy(nil)
-		return err
-	})
-	if errors.Is(err, badger.ErrKeyNotFound) {
-		return nil, ErrAbsent
-	}
-	return out, translate(err)
-}
-
 // Load returns every entry, line by line and each line by its sequence. The error is ErrDamaged when the bytes of one are not
 // those that were verified.
 func (s *Store) Load(book record.BookID) ([]record.Verified, error) {
@@ -216,7 +173,7 @@ func (s *Store) Load(book record.BookID) ([]record.Verified, error) {
 		sum []byte // nil in a row of an older version
 	}
 	var rows []row
-	err := s.scan([]byte{'e'}, []byte{'e'}, func(key, raw []byte) error {
+	err := s.scan("e", func(key, raw []byte) error {
 		r := row{raw: bytes.Clone(raw)}
 		if len(key) == entryKeySize {
 			r.sum = bytes.Clone(key[entryKeySize-sha256.Size:])
@@ -250,23 +207,15 @@ func (s *Store) Load(book record.BookID) ([]record.Verified, error) {
 
 // Each calls f with the bytes of every entry, line by line and each line by its sequence. The slice is f's only during the
 // call. An error of f ends the walk and is returned.
-func (s *Store) Each(f func(raw []byte) error) error { return s.walk([]byte{'e'}, []byte{'e'}, f) }
-
-// Line calls f with the bytes of the entries of one line from sequence from on.
-func (s *Store) Line(key record.KeyID, from uint64, f func(raw []byte) error) error {
-	prefix := append([]byte{'e'}, key[:]...)
-	return s.walk(prefix, binary.BigEndian.AppendUint64(bytes.Clone(prefix), from), f)
+func (s *Store) Each(f func(raw []byte) error) error {
+	return s.scan("e", func(_, raw []byte) error { return f(raw) })
 }
 
-func (s *Store) walk(prefix, start []byte, f func([]byte) error) error {
-	return s.scan(prefix, start, func(_, raw []byte) error { return f(raw) })
-}
-
-func (s *Store) scan(prefix, start []byte, f func(key, value []byte) error) error {
+func (s *Store) scan(prefix string, f func(key, value []byte) error) error {
 	return translate(s.db.View(func(t *badger.Txn) error {
-		it := t.NewIterator(badger.IteratorOptions{Prefix: prefix, PrefetchValues: true, PrefetchSize: 100})
+		it := t.NewIterator(badger.IteratorOptions{Prefix: []byte(prefix), PrefetchValues: true, PrefetchSize: 100})
 		defer it.Close()
-		for it.Seek(start); it.Valid(); it.Next() {
+		for it.Rewind(); it.Valid(); it.Next() {
 			if err := it.Item().Value(func(value []byte) error { return f(it.Item().Key(), value) }); err != nil {
 				return err
 			}
@@ -277,8 +226,7 @@ func (s *Store) scan(prefix, start []byte, f func(key, value []byte) error) erro
 
 // Views calls f with each derived view whose name begins with prefix. The slice is f's only during the call.
 func (s *Store) Views(prefix string, f func(name string, data []byte) error) error {
-	rows := []byte("v" + prefix)
-	return s.scan(rows, rows, func(key, data []byte) error { return f(string(key[1:]), data) })
+	return s.scan("v"+prefix, func(key, data []byte) error { return f(string(key[1:]), data) })
 }
 
 // SetViews replaces derived views, a view of no bytes by none. Not all at once: whoever needs to know that all are there writes a
