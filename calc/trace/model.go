@@ -1,0 +1,221 @@
+package trace
+
+import (
+	"fmt"
+	"math"
+
+	"gonum.org/v1/gonum/interp"
+
+	"example.org/chargehand/calc/gas"
+	"example.org/chargehand/calc/quantity"
+)
+
+// path is pressure against specific volume while the gas expands, as cubics in the logarithms, both ways.
+type path struct {
+	cooled          float64
+	p, v            interp.FritschButland // ln p by ln v, ln v by ln p
+	vLow, vHigh     float64               // ln m3/kg
+	lowest, highest float64               // Pa, absolute
+}
+
+const pathNodes = 110
+
+// leastPressure ends a path: just above an ambient pressure at sea level, below which no fluid side reads.
+const leastPressure = 0.11e6 // Pa, absolute
+
+// expansion is the gas from its state before the bleed: the temperatures of the isentrope over a row of volumes.
+type expansion struct {
+	gas        *gas.Model
+	t          float64
+	lnV, coldT []float64
+}
+
+// newExpansion follows the isentrope by dT/dv = -(T/cv) (dp/dT)_v. It stops cooling at 200.5 K, where the gas model ends; a gas
+// in a shell does not get there.
+func newExpansion(g *gas.Model, t quantity.Temperature, p quantity.Pressure) (*expansion, error) {
+	dense, err := g.Density(t, min(p*1.25, gas.MaxPressure)) // the gauge may read low
+	if err != nil {
+		return nil, err
+	}
+	thin, err := g.Density(t, leastPressure)
+	if err != nil {
+		return nil, err
+	}
+	start, err := g.Density(t, p)
+	if err != nil {
+		return nil, err
+	}
+	e := &expansion{gas: g, t: float64(t)}
+	low, high, at := -math.Log(float64(dense)), -math.Log(float64(thin)), -math.Log(float64(start))
+	cold, step := float64(t), (high-low)/(pathNodes-1)
+	slope := func(lnV, t float64) (float64, error) {
+		v := math.Exp(lnV)
+		s, err := g.State(quantity.Temperature(max(t, 200.5)), gas.Density(1/v))
+		return -t / s.Cv * s.DpDT * v, err
+	}
+	for i := range pathNodes {
+		x := low + float64(i)*step
+		if i > 0 && x > at && cold > 200.5 {
+			h := min(step, x-at)
+			k1, err := slope(x-h, cold)
+			k2, err2 := slope(x-h/2, cold+k1*h/2)
+			if err == nil && err2 == nil { // where the model ends the cooling does
+				cold = max(200.5, cold+k2*h)
+			}
+		}
+		e.lnV, e.coldT = append(e.lnV, x), append(e.coldT, cold)
+	}
+	return e, nil
+}
+
+// path returns the way between the isotherm, cooled 0, and the isentrope, 1.
+func (e *expansion) path(cooled float64) (*path, error) {
+	c := &path{cooled: cooled}
+	var vs, ps []float64
+	for i, x := range e.lnV {
+		t := quantity.Temperature(e.t - cooled*(e.t-e.coldT[i]))
+		p, err := e.gas.Pressure(t, gas.Density(math.Exp(-x)))
+		if err != nil { // below what the model reaches
+			break
+		}
+		vs, ps = append(vs, x), append(ps, math.Log(float64(p)))
+	}
+	n := len(vs)
+	back, front := make([]float64, n), make([]float64, n)
+	for i := range vs {
+		back[i], front[i] = ps[n-1-i], vs[n-1-i]
+	}
+	if err := c.p.Fit(vs, ps); err != nil {
+		return nil, fmt.Errorf("the gas's fall: %w", err)
+	}
+	if err := c.v.Fit(back, front); err != nil {
+		return nil, fmt.Errorf("the gas's fall: %w", err)
+	}
+	c.vLow, c.vHigh, c.lowest, c.highest = vs[0], vs[n-1], math.Exp(ps[n-1]), math.Exp(ps[0])
+	return c, nil
+}
+
+// volume returns the specific volume at an absolute pressure and -dp/dv there; ok is false beyond the path.
+func (c *path) volume(p float64) (v, slope float64, ok bool) {
+	if !(p >= c.lowest && p <= c.highest) {
+		return 0, 0, false
+	}
+	x := c.v.Predict(math.Log(p))
+	v = math.Exp(x)
+	return v, -c.p.PredictDerivative(x) * p / v, true
+}
+
+// pressure returns the absolute pressure at a specific volume and -dp/dv; beyond the path it follows the ideal gas.
+func (c *path) pressure(v float64) (p, slope float64) {
+	x := math.Log(v)
+	in := min(max(x, c.vLow), c.vHigh)
+	p = math.Exp(c.p.Predict(in) + in - x)
+	if in != x {
+		return p, p / v
+	}
+	return p, -c.p.PredictDerivative(x) * p / v
+}
+
+// line is the specific volume a + b x of the readings before a break, by weighted least squares.
+type line struct{ a, b, aa, ab, bb, chi2, logDet float64 }
+
+// sums are the weighted sums of readings.
+type sums struct{ n, x, xx, y, xy, yy float64 }
+
+func (s *sums) add(x, y, w float64) {
+	s.n += w
+	s.x += w * x
+	s.xx += w * x * x
+	s.y += w * y
+	s.xy += w * x * y
+	s.yy += w * y * y
+}
+
+func (s *sums) line() (line, bool) {
+	det := s.n*s.xx - s.x*s.x
+	if !(det > 1e-12*s.n*s.xx) {
+		return line{}, false
+	}
+	l := line{aa: s.xx / det, ab: -s.x / det, bb: s.n / det, logDet: math.Log(det)}
+	l.a, l.b = (s.xx*s.y-s.x*s.xy)/det, (s.n*s.xy-s.x*s.y)/det
+	l.chi2 = max(0, s.yy-l.a*s.y-l.b*s.xy)
+	return l, l.b > 0 && l.a > 0
+}
+
+// at returns the specific volume at x and its variance.
+func (l *line) at(x float64) (v, variance float64) { return l.a + l.b*x, l.aa + 2*l.ab*x + l.bb*x*x }
+
+// node is one choice of the unknowns that the line does not hold, with the line that goes with it.
+type node struct {
+	above  int     // readings before the break
+	cooled float64 // the path
+	offset float64 // Pa: what the gauge shows above the gas
+	line   line
+	path   *path
+	cost   float64 // -2 ln of the likelihood, without a constant
+	volume float64 // ln of the grid's cell and of what the line leaves, for the weight
+}
+
+// model is a trace with x from 0 to 1.
+type model struct {
+	ps      []Pair
+	o       Options
+	x       []float64
+	scale   float64 // of x, in the unit of Drawn
+	sigma   float64 // Pa, of one reading
+	chance  float64 // root mean square of the residuals by the stated sigma
+	expand  *expansion
+	still   *path // the isotherm
+	ks      []int // places of the break worth a look
+	fast    bool
+	rubbing bool
+}
+
+func newModel(ps []Pair, o Options) (*model, error) {
+	m := &model{ps: ps, o: o, sigma: float64(o.U), scale: ps[len(ps)-1].Drawn - ps[0].Drawn}
+	for _, p := range ps {
+		m.x = append(m.x, (p.Drawn-ps[0].Drawn)/m.scale)
+	}
+	var err error
+	if m.expand, err = newExpansion(o.Gas, o.Temperature, ps[0].Pressure.Abs(o.Ambient)); err != nil {
+		return nil, err
+	}
+	m.still, err = m.expand.path(0)
+	return m, err
+}
+
+// nodes returns the likelihood of every place of the break for a path and an offset.
+func (m *model) nodes(c *path, offset float64, ks []int) []node {
+	var out []node
+	var s sums
+	amb := float64(m.o.Ambient)
+	next := 0
+	for i, p := range m.ps {
+		v, slope, ok := c.volume(float64(p.Pressure) - offset + amb)
+		if !ok {
+			break
+		}
+		w := slope / m.sigma
+		s.add(m.x[i], v, w*w)
+		for next < len(ks) && ks[next] < i+1 {
+			next++
+		}
+		if next == len(ks) || ks[next] != i+1 {
+			continue
+		}
+		l, ok := s.line()
+		if !ok {
+			continue
+		}
+		n := node{above: i + 1, cooled: c.cooled, offset: offset, line: l, path: c, volume: -l.logDet / 2}
+		n.cost = l.chi2 + float64(i+1)*math.Log(2*math.Pi*m.sigma*m.sigma)
+		for j := i + 1; j < len(m.ps); j++ {
+			gas, _ := c.pressure(l.a + l.b*m.x[j])
+			would := max(gas-amb+offset, m.sigma)
+			above := max(0, (float64(m.ps[j].Pressure)-would)/m.sigma)
+			n.cost += 2*math.Log(would) + above*above
+		}
+		out = append(out, n)
+	}
+	return out
+}
