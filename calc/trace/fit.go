@@ -14,7 +14,7 @@ import (
 
 // The grid over the unknowns: so many steps over what is possible, and again over what the readings leave of that.
 const (
-	pathSteps   = 21
+	pathSteps   = 25
 	offsetSteps = 13
 	reach       = 2.8    // standard deviations of the offset
 	farBelow    = 40.0   // of cost: places of the break that need no look
@@ -47,7 +47,7 @@ func (m *model) slack(offset float64, rubs bool) float64 {
 // penalty is -2 ln of the prior of a node.
 func (m *model) penalty(n node) float64 {
 	var c float64
-	if !m.fast {
+	if !m.fast && !m.rubbing { // a trace that rubs may hide a cooled one
 		c = n.cooled * n.cooled / (usualCooled * usualCooled)
 	}
 	if m.rubbing && n.offset < 0 {
@@ -58,28 +58,38 @@ func (m *model) penalty(n node) float64 {
 
 func (m *model) total(n node) float64 { return n.cost + m.penalty(n) }
 
-// grid are all nodes for a range of paths and of offsets; a range of no width has one node.
-func (m *model) grid(cooled, offset [2]float64, ks []int) ([]node, error) {
-	span := func(r [2]float64, n int) []float64 {
-		if r[1]-r[0] <= 0 {
-			return r[:1]
-		}
-		return floats.Span(make([]float64, n), r[0], r[1])
+// cells are the middles of n cells over a range, closer together towards 0 by the square, and ln of their widths; a range of no
+// width is one cell.
+func cells(r [2]float64, n int, squared bool) (at, ln []float64) {
+	if r[1] <= r[0] {
+		return r[:1], []float64{0}
 	}
+	at = floats.Span(make([]float64, n), r[0], r[1])
+	if squared {
+		floats.Span(at, math.Sqrt(r[0]), math.Sqrt(r[1]))
+		floats.Mul(at, at)
+	}
+	for i := range at {
+		ln = append(ln, math.Log((at[min(i+1, n-1)]-at[max(i-1, 0)])/2))
+	}
+	return at, ln
+}
+
+// grid are all nodes for a range of paths and of offsets.
+func (m *model) grid(cooled, offset [2]float64, ks []int) ([]node, error) {
 	var all []node
-	for _, c := range span(cooled, pathSteps) {
+	cs, wide := cells(cooled, pathSteps, true)
+	os, tall := cells(offset, offsetSteps, false)
+	for i, c := range cs {
 		p, err := m.expand.path(c)
 		if err != nil {
 			return nil, err
 		}
-		for _, o := range span(offset, offsetSteps) {
-			ns := m.nodes(p, o, ks)
-			if c == 0 { // the end of a row is half a cell
-				for i := range ns {
-					ns[i].volume -= math.Ln2
-				}
+		for j, o := range os {
+			for _, n := range m.nodes(p, o, ks) {
+				n.volume += wide[i] + tall[j]
+				all = append(all, n)
 			}
-			all = append(all, ns...)
 		}
 	}
 	return all, nil
@@ -103,7 +113,7 @@ func (m *model) settle() (node, error) {
 	var coarse []node
 	for range 2 { // once more with the scatter that was found
 		var rough []node
-		for _, c := range []float64{0, 0.2, 0.5, 1} {
+		for _, c := range []float64{0, 0.02, 0.05, 0.1, 0.2, 0.35, 0.6, 1} {
 			p, err := m.expand.path(c)
 			if err != nil {
 				return node{}, err
@@ -127,9 +137,9 @@ func (m *model) settle() (node, error) {
 		}
 		best := slices.MinFunc(coarse, byCost)
 		free := float64(max(best.above-2, 1))
-		spread := math.Sqrt(best.line.chi2/free) * m.sigma / float64(m.o.U)
-		m.chance = math.Sqrt(best.line.chi2/float64(best.above)) * m.sigma / float64(m.o.U)
-		if m.sigma > float64(m.o.U) || best.line.chi2 <= (distuv.ChiSquared{K: free}).Quantile(1-odds) {
+		spread := math.Sqrt(best.chi2/free) * m.sigma / float64(m.o.U)
+		m.chance = math.Sqrt(best.chi2/float64(best.above)) * m.sigma / float64(m.o.U)
+		if m.sigma > float64(m.o.U) || best.chi2 <= (distuv.ChiSquared{K: free}).Quantile(1-odds) {
 			break
 		}
 		m.sigma = spread * float64(m.o.U)
@@ -233,12 +243,17 @@ func (m *model) fit(best node) (*Fit, error) {
 		cooled, offset = around(ns, cooled, pathSteps, func(n node) float64 { return n.cooled }), around(ns, offset, offsetSteps, func(n node) float64 { return n.offset })
 	}
 	best = slices.MinFunc(ns, func(a, b node) int { return cmp.Compare(m.total(a), m.total(b)) })
-	q := m.charges(ns)
+	q := m.charges(ns, m.weight)
+	middle, low := q(0.5), q((1-inside)/2)
+	if !m.fast && !m.rubbing { // nothing speaks against a slow bleed: the gas as read, with what else is possible above it
+		slow := m.charges(ns, m.slow)
+		middle, low = slow(0.5), min(low, slow((1-inside)/2))
+	}
 	k := best.above
 	mid := (m.x[k-1] + m.x[k]) / 2
 	v, _ := best.line.at(mid)
 	first, drawn := m.ps[0].Drawn, func(x float64) float64 { return m.ps[0].Drawn + x*m.scale }
-	f := &Fit{Charge: q(0.5), Low: q((1 - inside) / 2), High: q((1 + inside) / 2), Break: drawn(mid), From: m.ps[k-1].Drawn, To: m.ps[k].Drawn,
+	f := &Fit{Charge: middle, Low: low, High: q((1 + inside) / 2), Break: drawn(mid), From: m.ps[k-1].Drawn, To: m.ps[k].Drawn,
 		Shown: quantity.GaugePressure(m.shown(best, mid)), Above: k, Below: len(m.ps) - k, GasVolume: v / best.line.b * m.scale,
 		Needle: quantity.GaugePressure(m.shown(best, m.x[k-1])-m.shown(best, m.x[k])) / 2, Scatter: m.chance, Cooled: best.cooled, Fast: m.fast, Friction: m.rubbing}
 	f.fall = func(x float64) quantity.GaugePressure {
@@ -247,7 +262,16 @@ func (m *model) fit(best node) (*Fit, error) {
 	return f, nil
 }
 
+// weight is ln of what a node counts for.
 func (m *model) weight(n node) float64 { return n.volume - m.total(n)/2 }
+
+// slow is the weight where the gas kept its temperature and nothing rubs.
+func (m *model) slow(n node) float64 {
+	if n.cooled > 0 {
+		return math.Inf(-1)
+	}
+	return n.volume - (n.cost+m.slack(n.offset, false))/2
+}
 
 // weighty leaves out the nodes that do not count.
 func (m *model) weighty(ns []node) []node {
@@ -258,9 +282,9 @@ func (m *model) weighty(ns []node) []node {
 	return slices.DeleteFunc(ns, func(n node) bool { return !(m.weight(n) > most+math.Log(negligible)) })
 }
 
-// around is the range that the nodes take, with a step of the grid either way.
+// around is the range that the nodes take, with some steps of the grid either way.
 func around(ns []node, within [2]float64, steps int, of func(node) float64) [2]float64 {
-	step := (within[1] - within[0]) / float64(steps-1)
+	step := 2 * (within[1] - within[0]) / float64(steps-1)
 	low, high := math.Inf(1), math.Inf(-1)
 	for _, n := range ns {
 		low, high = min(low, of(n)), max(high, of(n))
@@ -269,13 +293,16 @@ func around(ns []node, within [2]float64, steps int, of func(node) float64) [2]f
 }
 
 // charges returns the quantiles of the charge: a mixture of normals, one for each node and place of the break.
-func (m *model) charges(ns []node) func(float64) quantity.GaugePressure {
+func (m *model) charges(ns []node, weight func(node) float64) func(float64) quantity.GaugePressure {
 	type part struct{ w, mean, sd float64 }
 	var parts []part
-	most, sum := m.weight(slices.MaxFunc(ns, func(a, b node) int { return cmp.Compare(m.weight(a), m.weight(b)) })), 0.0
+	most, sum := weight(slices.MaxFunc(ns, func(a, b node) int { return cmp.Compare(weight(a), weight(b)) })), 0.0
 	low, high := math.Inf(1), math.Inf(-1)
 	for _, n := range ns {
-		w := math.Exp(m.weight(n)-most) / places
+		w := math.Exp(weight(n)-most) / places
+		if w < negligible {
+			continue
+		}
 		for i := range places {
 			part := part{w: w}
 			x := m.x[n.above-1] + (float64(i)+0.5)/places*(m.x[n.above]-m.x[n.above-1])

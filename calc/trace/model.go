@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 
+	"gonum.org/v1/gonum/floats"
 	"gonum.org/v1/gonum/interp"
 
 	"example.org/chargehand/calc/gas"
@@ -23,58 +24,65 @@ const pathNodes = 110
 // leastPressure ends a path: just above an ambient pressure at sea level, below which no fluid side reads.
 const leastPressure = 0.11e6 // Pa, absolute
 
-// expansion is the gas from its state before the bleed: the temperatures of the isentrope over a row of volumes.
+// expansion is the gas from its state before the bleed, over a row of volumes.
 type expansion struct {
-	gas        *gas.Model
-	t          float64
-	lnV, coldT []float64
+	gas       *gas.Model
+	t         float64
+	start     float64   // ln m3/kg, before the bleed
+	lnV       []float64 // the row
+	hot, cold []float64 // v/cv (dp/dT)_v on the isotherm, and on the isentrope
+	coldT     []float64 // of the isentrope
 }
 
-// newExpansion follows the isentrope by dT/dv = -(T/cv) (dp/dT)_v. It stops cooling at 200.5 K, where the gas model ends; a gas
-// in a shell does not get there.
+// coldest is where the isentrope stops: the gas model ends at 200 K, and gas in a shell hardly gets there.
+const coldest = 200.5 // K
+
 func newExpansion(g *gas.Model, t quantity.Temperature, p quantity.Pressure) (*expansion, error) {
-	dense, err := g.Density(t, min(p*1.25, gas.MaxPressure)) // the gauge may read low
-	if err != nil {
-		return nil, err
-	}
-	thin, err := g.Density(t, leastPressure)
-	if err != nil {
-		return nil, err
-	}
-	start, err := g.Density(t, p)
-	if err != nil {
-		return nil, err
-	}
-	e := &expansion{gas: g, t: float64(t)}
-	low, high, at := -math.Log(float64(dense)), -math.Log(float64(thin)), -math.Log(float64(start))
-	cold, step := float64(t), (high-low)/(pathNodes-1)
-	slope := func(lnV, t float64) (float64, error) {
-		v := math.Exp(lnV)
-		s, err := g.State(quantity.Temperature(max(t, 200.5)), gas.Density(1/v))
-		return -t / s.Cv * s.DpDT * v, err
-	}
-	for i := range pathNodes {
-		x := low + float64(i)*step
-		if i > 0 && x > at && cold > 200.5 {
-			h := min(step, x-at)
-			k1, err := slope(x-h, cold)
-			k2, err2 := slope(x-h/2, cold+k1*h/2)
-			if err == nil && err2 == nil { // where the model ends the cooling does
-				cold = max(200.5, cold+k2*h)
-			}
+	var ends [3]float64
+	for i, q := range []quantity.Pressure{min(p*1.25, gas.MaxPressure), leastPressure, p} { // the gauge may read low
+		rho, err := g.Density(t, q)
+		if err != nil {
+			return nil, err
 		}
-		e.lnV, e.coldT = append(e.lnV, x), append(e.coldT, cold)
+		ends[i] = -math.Log(float64(rho))
+	}
+	e := &expansion{gas: g, t: float64(t), start: ends[2], lnV: floats.Span(make([]float64, pathNodes), ends[0], ends[1])}
+	cooling := func(t, lnV float64) float64 {
+		s, err := g.State(quantity.Temperature(t), gas.Density(math.Exp(-lnV)))
+		if err != nil { // thinner than the model's pressures reach: nearly an ideal gas of two atoms
+			return 0.4
+		}
+		return math.Exp(lnV) / s.Cv * s.DpDT
+	}
+	at := e.t
+	for i, x := range e.lnV {
+		if i > 0 && x > e.start {
+			at = max(coldest, at*math.Exp(-e.cold[i-1]*min(x-e.lnV[i-1], x-e.start)))
+		}
+		e.hot, e.cold, e.coldT = append(e.hot, cooling(e.t, x)), append(e.cold, cooling(at, x)), append(e.coldT, at)
 	}
 	return e, nil
 }
 
-// path returns the way between the isotherm, cooled 0, and the isentrope, 1.
+// path returns the way of the gas at a bleed of steady speed: dT/dlnv = -T v/cv (dp/dT)_v + (Tw - T) v/c, with c the volume in
+// which the shell's heat follows, cooled/(1 - cooled) of the volume before the bleed. So cooled 0 is the isotherm and 1 the
+// isentrope.
+//
+// Source: the thermal time constant of Otis and Pourmovahed (1985, from memory), written in volume in place of time.
 func (e *expansion) path(cooled float64) (*path, error) {
 	c := &path{cooled: cooled}
 	var vs, ps []float64
+	at := e.t
 	for i, x := range e.lnV {
-		t := quantity.Temperature(e.t - cooled*(e.t-e.coldT[i]))
-		p, err := e.gas.Pressure(t, gas.Density(math.Exp(-x)))
+		if i > 0 && x > e.start && cooled > 0 {
+			h := min(x-e.lnV[i-1], x-e.start)
+			warming := math.Exp(x-h/2-e.start) * (1 - cooled) / cooled
+			part := (at - e.coldT[i-1]) / max(e.t-e.coldT[i-1], 1e-9) // between isentrope and isotherm
+			rate := e.cold[i-1] + part*(e.hot[i-1]-e.cold[i-1])
+			end := warming * e.t / (warming + rate)
+			at = max(coldest, end+(at-end)*math.Exp(-(warming+rate)*h))
+		}
+		p, err := e.gas.Pressure(quantity.Temperature(at), gas.Density(math.Exp(-x)))
 		if err != nil { // below what the model reaches
 			break
 		}
@@ -117,10 +125,10 @@ func (c *path) pressure(v float64) (p, slope float64) {
 }
 
 // line is the specific volume a + b x of the readings before a break, by weighted least squares.
-type line struct{ a, b, aa, ab, bb, chi2, logDet float64 }
+type line struct{ a, b, aa, ab, bb, logDet float64 }
 
 // sums are the weighted sums of readings.
-type sums struct{ n, x, xx, y, xy, yy float64 }
+type sums struct{ n, x, xx, y, xy float64 }
 
 func (s *sums) add(x, y, w float64) {
 	s.n += w
@@ -128,7 +136,6 @@ func (s *sums) add(x, y, w float64) {
 	s.xx += w * x * x
 	s.y += w * y
 	s.xy += w * x * y
-	s.yy += w * y * y
 }
 
 func (s *sums) line() (line, bool) {
@@ -138,7 +145,6 @@ func (s *sums) line() (line, bool) {
 	}
 	l := line{aa: s.xx / det, ab: -s.x / det, bb: s.n / det, logDet: math.Log(det)}
 	l.a, l.b = (s.xx*s.y-s.x*s.xy)/det, (s.n*s.xy-s.x*s.y)/det
-	l.chi2 = max(0, s.yy-l.a*s.y-l.b*s.xy)
 	return l, l.b > 0 && l.a > 0
 }
 
@@ -152,6 +158,7 @@ type node struct {
 	offset float64 // Pa: what the gauge shows above the gas
 	line   line
 	path   *path
+	chi2   float64 // of the readings before the break
 	cost   float64 // -2 ln of the likelihood, without a constant
 	volume float64 // ln of the grid's cell and of what the line leaves, for the weight
 }
@@ -208,13 +215,17 @@ func (m *model) nodes(c *path, offset float64, ks []int) []node {
 			continue
 		}
 		n := node{above: i + 1, cooled: c.cooled, offset: offset, line: l, path: c, volume: -l.logDet / 2}
-		n.cost = l.chi2 + float64(i+1)*math.Log(2*math.Pi*m.sigma*m.sigma)
-		for j := i + 1; j < len(m.ps); j++ {
+		for j, q := range m.ps {
 			gas, _ := c.pressure(l.a + l.b*m.x[j])
 			would := max(gas-amb+offset, m.sigma)
-			above := max(0, (float64(m.ps[j].Pressure)-would)/m.sigma)
-			n.cost += 2*math.Log(would) + above*above
+			z := (float64(q.Pressure) - would) / m.sigma
+			if j <= i { // of pressures, not of volumes, which say little near zero
+				n.chi2 += z * z
+				continue
+			}
+			n.cost += 2*math.Log(would) + max(0, z)*max(0, z)
 		}
+		n.cost += n.chi2 + float64(i+1)*math.Log(2*math.Pi*m.sigma*m.sigma)
 		out = append(out, n)
 	}
 	return out
