@@ -75,6 +75,16 @@ func cells(r [2]float64, n int, squared bool) (at, ln []float64) {
 	return at, ln
 }
 
+// later is ln of the volume before the bleed when the gauge shows so much above the gas, against that at no offset.
+func (m *model) later(offset float64) float64 {
+	first := float64(m.ps[0].Pressure) + float64(m.o.Ambient)
+	v, _, ok := m.still.volume(first - offset)
+	if !ok {
+		return 0
+	}
+	return math.Log(v) - m.expand.start
+}
+
 // grid are all nodes for a range of paths and of offsets.
 func (m *model) grid(cooled, offset [2]float64, ks []int) ([]node, error) {
 	var all []node
@@ -86,6 +96,10 @@ func (m *model) grid(cooled, offset [2]float64, ks []int) ([]node, error) {
 			return nil, err
 		}
 		for j, o := range os {
+			p, err := p.from(m.later(o))
+			if err != nil {
+				return nil, err
+			}
 			for _, n := range m.nodes(p, o, ks) {
 				n.volume += wide[i] + tall[j]
 				all = append(all, n)

@@ -1,8 +1,10 @@
 package trace
 
 import (
+	"errors"
 	"fmt"
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/floats"
 	"gonum.org/v1/gonum/interp"
@@ -15,6 +17,7 @@ import (
 type path struct {
 	cooled          float64
 	p, v            interp.FritschButland // ln p by ln v, ln v by ln p
+	lnV, lnP, drift []float64             // nodes; drift is dlnp by the ln of the volume before the bleed, at one volume
 	vLow, vHigh     float64               // ln m3/kg
 	lowest, highest float64               // Pa, absolute
 }
@@ -70,37 +73,56 @@ func newExpansion(g *gas.Model, t quantity.Temperature, p quantity.Pressure) (*e
 //
 // Source: the thermal time constant of Otis and Pourmovahed (1985, from memory), written in volume in place of time.
 func (e *expansion) path(cooled float64) (*path, error) {
-	c := &path{cooled: cooled}
-	var vs, ps []float64
+	var vs, ps, drift []float64
 	at := e.t
 	for i, x := range e.lnV {
+		moves := 0.
 		if i > 0 && x > e.start && cooled > 0 {
 			h := min(x-e.lnV[i-1], x-e.start)
 			warming := math.Exp(x-h/2-e.start) * (1 - cooled) / cooled
 			part := (at - e.coldT[i-1]) / max(e.t-e.coldT[i-1], 1e-9) // between isentrope and isotherm
 			rate := e.cold[i-1] + part*(e.hot[i-1]-e.cold[i-1])
 			end := warming * e.t / (warming + rate)
+			was := at
 			at = max(coldest, end+(at-end)*math.Exp(-(warming+rate)*h))
+			if at > coldest { // p goes about as T; the path moves along with its start
+				moves = math.Log(was/at) / h
+			}
 		}
 		p, err := e.gas.Pressure(quantity.Temperature(at), gas.Density(math.Exp(-x)))
 		if err != nil { // below what the model reaches
 			break
 		}
-		vs, ps = append(vs, x), append(ps, math.Log(float64(p)))
+		vs, ps, drift = append(vs, x), append(ps, math.Log(float64(p))), append(drift, moves)
 	}
+	return newPath(cooled, vs, ps, drift)
+}
+
+// newPath takes nodes of ln v and ln p.
+func newPath(cooled float64, vs, ps, drift []float64) (*path, error) {
+	c := &path{cooled: cooled, lnV: vs, lnP: ps, drift: drift}
 	n := len(vs)
-	back, front := make([]float64, n), make([]float64, n)
-	for i := range vs {
-		back[i], front[i] = ps[n-1-i], vs[n-1-i]
-	}
-	if err := c.p.Fit(vs, ps); err != nil {
-		return nil, fmt.Errorf("the gas's fall: %w", err)
-	}
-	if err := c.v.Fit(back, front); err != nil {
+	back, front := slices.Clone(ps), slices.Clone(vs)
+	slices.Reverse(back)
+	slices.Reverse(front)
+	if err := errors.Join(c.p.Fit(vs, ps), c.v.Fit(back, front)); err != nil {
 		return nil, fmt.Errorf("the gas's fall: %w", err)
 	}
 	c.vLow, c.vHigh, c.lowest, c.highest = vs[0], vs[n-1], math.Exp(ps[n-1]), math.Exp(ps[0])
 	return c, nil
+}
+
+// from returns the path of a gas that started at another volume, larger by the factor exp(later): the gauge misreads the start.
+func (c *path) from(later float64) (*path, error) {
+	if c.cooled == 0 || later == 0 {
+		return c, nil
+	}
+	ps := slices.Clone(c.lnP)
+	floats.AddScaled(ps, later, c.drift)
+	for i := 1; i < len(ps); i++ { // a bend at the start must not turn the fall round
+		ps[i] = min(ps[i], ps[i-1]-1e-9)
+	}
+	return newPath(c.cooled, c.lnV, ps, c.drift)
 }
 
 // volume returns the specific volume at an absolute pressure and -dp/dv there; ok is false beyond the path.
