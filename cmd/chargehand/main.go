@@ -77,7 +77,7 @@ func newRoot() *cobra.Command {
 		title    string
 		commands []*cobra.Command
 	}{
-		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newBoard(), newTrend()}},
+		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newBoard(), newTrend(), newTrace()}},
 		{"What was signed", []*cobra.Command{newCountersign(), newCorrect(), newWithdraw(), newAudit()}},
 		{"The book and its laptops", []*cobra.Command{newBook(), newHand(), newMeet()}},
 		{"Equipment", []*cobra.Command{newUnit(), newGauge(), newSheet(), newBottle()}},

@@ -24,12 +24,12 @@ type Traced struct {
 	Fit   *trace.Fit
 	// Charge, Low and High are at the sheet's reference with Limits beside them; with a chart all are at the gas temperature.
 	// The 95 % interval then also holds the error of that temperature.
-	Charge, Low, High        quantity.GaugePressure
-	LeastIn, Target, MostIn  quantity.GaugePressure // the sheet's limits
-	At                       quantity.Temperature   // to which they hold
-	Compared                 bool                   // false: see NotCompared
-	NotCompared              string
-	AllIn, MiddleIn, AllOut  bool
+	Charge, Low, High       quantity.GaugePressure
+	LeastIn, Target, MostIn quantity.GaugePressure // the sheet's limits
+	At                      quantity.Temperature   // to which they hold
+	Compared                bool                   // false: see NotCompared
+	NotCompared             string
+	AllIn, MiddleIn, AllOut bool
 }
 
 // In tells whether the indication is in limits: the charge found is.
