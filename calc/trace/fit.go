@@ -15,12 +15,13 @@ import (
 // The grid over the unknowns: so many steps over what is possible, and again over what the readings leave of that.
 const (
 	pathSteps   = 25
-	offsetSteps = 13
+	offsetSteps = 9
 	reach       = 2.8    // standard deviations of the offset
 	farBelow    = 40.0   // of cost: places of the break that need no look
 	negligible  = 1e-6   // weight of a node, as a part of the largest
 	usualCooled = 0.15   // standard deviation of Cooled for a slow bleed
 	telling     = 3.84   // a fall of cost that chance gives once in twenty
+	certain     = 10.8   // and once in a thousand
 	places      = 5      // of the break between the two readings that hold it
 	inside      = 0.95   // the interval
 	odds        = 0.05   // for the scatter to count as more than stated
@@ -177,7 +178,7 @@ func (m *model) bent(ns []node) {
 			}
 		}
 	}
-	if slow-min(cold, rubbed) < telling {
+	if m.gain = slow - min(cold, rubbed); m.gain < telling {
 		return
 	}
 	m.fast, m.rubbing = cold < rubbed+unclear, rubbed < cold+unclear
@@ -246,7 +247,7 @@ func (m *model) fit(best node) (*Fit, error) {
 	}
 	cooled, offset := [2]float64{0, 1}, m.offsets()
 	var ns []node
-	for range 3 {
+	for range 2 {
 		var err error
 		if ns, err = m.grid(cooled, offset, ks); err != nil {
 			return nil, err
@@ -258,16 +259,19 @@ func (m *model) fit(best node) (*Fit, error) {
 	}
 	best = slices.MinFunc(ns, func(a, b node) int { return cmp.Compare(m.total(a), m.total(b)) })
 	q := m.charges(ns, m.weight)
-	middle, low := q(0.5), q((1-inside)/2)
-	if !m.fast && !m.rubbing { // nothing speaks against a slow bleed: the gas as read, with what else is possible above it
+	middle, low, high := q(0.5), q((1-inside)/2), q((1+inside)/2)
+	if m.gain < certain && slices.ContainsFunc(ns, func(n node) bool { return n.cooled == 0 }) {
 		slow := m.charges(ns, m.slow)
-		middle, low = slow(0.5), min(low, slow((1-inside)/2))
+		low = min(low, slow((1-inside)/2)) // a slow bleed is not ruled out
+		if !m.fast && !m.rubbing {         // and nothing speaks against it: the gas as read, with what else is possible above it
+			middle, high = slow(0.5), max(high, slow((1+inside)/2))
+		}
 	}
 	k := best.above
 	mid := (m.x[k-1] + m.x[k]) / 2
 	v, _ := best.line.at(mid)
 	first, drawn := m.ps[0].Drawn, func(x float64) float64 { return m.ps[0].Drawn + x*m.scale }
-	f := &Fit{Charge: middle, Low: low, High: q((1 + inside) / 2), Break: drawn(mid), From: m.ps[k-1].Drawn, To: m.ps[k].Drawn,
+	f := &Fit{Charge: middle, Low: low, High: high, Break: drawn(mid), From: m.ps[k-1].Drawn, To: m.ps[k].Drawn,
 		Shown: quantity.GaugePressure(m.shown(best, mid)), Above: k, Below: len(m.ps) - k, GasVolume: v / best.line.b * m.scale,
 		Needle: quantity.GaugePressure(m.shown(best, m.x[k-1])-m.shown(best, m.x[k])) / 2, Scatter: m.chance, Cooled: best.cooled, Fast: m.fast, Friction: m.rubbing}
 	f.fall = func(x float64) quantity.GaugePressure {

@@ -194,8 +194,9 @@ type model struct {
 	sigma   float64 // Pa, of one reading
 	chance  float64 // root mean square of the residuals by the stated sigma
 	expand  *expansion
-	still   *path // the isotherm
-	ks      []int // places of the break worth a look
+	still   *path   // the isotherm
+	ks      []int   // places of the break worth a look
+	gain    float64 // of likelihood when the fall may be bent
 	fast    bool
 	rubbing bool
 }
