@@ -87,7 +87,8 @@ type Fit struct {
 	Needle quantity.GaugePressure
 	// Scatter is the root mean square of the readings about the fit, as a part of the stated uncertainty.
 	Scatter float64
-	// Cooled is how far the gas went from the isotherm, 0, towards the isentrope, 1: what the readings make likeliest.
+	// Cooled is what the readings make likeliest of the speed of the bleed, 0 the isotherm and 1 the isentrope: c/(1 + c), with c
+	// the growth of the gas while the shell gives back most of the heat, as a part of its volume before the bleed.
 	Cooled float64
 	// Fast: the fall is bent more than the isotherm allows, so the gas cooled while it was bled and the gauge read low. Friction:
 	// the readings lie below the isotherm by an offset, as a piston's seals cause. Both: the trace cannot tell which. The interval
@@ -122,7 +123,9 @@ func (f *Fit) Flags() []string {
 // nothing is assumed but that the reading lies between zero and what the gas would show, anywhere equally likely, so the shape of
 // the collapse does not matter. The interval holds 95 % of the likelihood over the place of the break and all unknowns, with
 // the gauge's bias normal, friction half normal, and Cooled half normal with a standard deviation of 0.15 unless the readings
-// contradict it (common practice, no source: manuals ask for a slow bleed).
+// contradict it (common practice, no source: manuals ask for a slow bleed). Where they do not rule out a slow bleed by a chance of
+// one in a thousand, its low end is not above that of one. Charge is the middle of a slow bleed when nothing is flagged. The
+// needle's term comes in with the place of the break, anywhere alike between the two readings that hold it.
 //
 // Source: the sudden drop as the charge is the manuals' own method (NAVEDTRA 14315, ch. 12; TM 5-3805-290-23-2, WP 0126). Gas by
 // its equation of state, nitrogen by Span et al. (2000). A change of regime by its likelihood is textbook statistics.

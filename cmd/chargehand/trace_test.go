@@ -7,15 +7,33 @@ import (
 	"os"
 	"strings"
 	"testing"
+
+	"example.org/chargehand/calc/gas"
+	"example.org/chargehand/calc/quantity"
 )
 
-// bleedOf is an invented bleed-down of nitrogen at 70 F as an ideal gas would fall, psi at each stroke: to the charge, then zero.
+// bleedOf is an invented bleed-down of nitrogen at 70 F, read to 5 psi at each stroke: to the charge, then zero.
 func bleedOf(from, charge float64, strokes int) []string {
-	const ambient = 14.696
+	return bleedAt(294.26, from, charge, strokes)
+}
+
+func bleedAt(t quantity.Temperature, from, charge float64, strokes int) []string {
+	const psi, ambient = 6894.757293168361, quantity.StandardAtmosphere
+	volume := func(p float64) float64 {
+		rho, err := gas.Nitrogen().Density(t, quantity.Pressure(p*psi)+ambient)
+		if err != nil {
+			panic(err)
+		}
+		return 1 / float64(rho)
+	}
 	var pairs []string
+	first, last := volume(from), volume(charge)
 	for x := range strokes + 1 {
-		p := (from+ambient)/(1+((from+ambient)/(charge+ambient)-1)*float64(x)/(float64(strokes)+0.5)) - ambient
-		pairs = append(pairs, fmt.Sprintf("%d=%.0fpsi", x, math.Round(p/5)*5))
+		p, err := gas.Nitrogen().Pressure(t, gas.Density(1/(first+(last-first)*float64(x)/(float64(strokes)+0.5))))
+		if err != nil {
+			panic(err)
+		}
+		pairs = append(pairs, fmt.Sprintf("%d=%.0fpsi", x, math.Round(float64(p-ambient)/psi/5)*5))
 	}
 	return append(pairs, fmt.Sprintf("%d=0psi", strokes+1), fmt.Sprintf("%d=0psi", strokes+2))
 }
@@ -100,6 +118,28 @@ func TestTraceOutOfLimits(t *testing.T) {
 	status, out, _ = command(t, traceArgs(bleedOf(1500, 500, 12), "--from", "unknown", "--unsigned")...)
 	if status != statusNo || !strings.Contains(out, "gas temperature is unknown") {
 		t.Errorf("%d\n%s", status, out)
+	}
+}
+
+// A charge of 1,000 psi at 20 C shows 919.1 psi at 0 C (nitrogen by Span et al. 2000, in a locked volume); found there, it is
+// brought back to 20 C.
+func TestTraceIsBroughtToTheReference(t *testing.T) {
+	inTrace(t)
+	if status, _, errs := command(t, "sheet", "add", "--part", "HA-40", "--charge", "1000psi", "--minus", "50psi", "--plus", "50psi", "--at", "20C", "--document", "CM-29", "--revision", "B", "--effective", "2021-01-01",
+		"--construction", "piston", "--passphrase-file", "pp"); status != statusOK {
+		t.Fatal(errs)
+	}
+	status, out, errs := command(t, traceArgs(bleedAt(273.15, 1900, 919.1, 14), "--temperature", "0C", "--unsigned", "--json")...)
+	if status != statusOK {
+		t.Fatal(status, out, errs)
+	}
+	j := traceOf(t, out)
+	t.Logf("%.0f psi, 95 %% %.0f to %.0f; flags %q", j.ChargePsi, j.LowPsi, j.HighPsi, j.Flags)
+	if math.Abs(j.ChargePsi-1000) > 25 || !(j.LowPsi < 1000 && j.HighPsi > 1000) || j.AtF != 68 || *j.LimitHighPsi != 1050 {
+		t.Errorf("%+v", j)
+	}
+	if j.HighPsi-j.ChargePsi < 1.2*(j.ChargePsi-j.LowPsi) {
+		t.Errorf("%.0f psi, 95 %% %.0f to %.0f: a piston's friction can only hide charge", j.ChargePsi, j.LowPsi, j.HighPsi)
 	}
 }
 
