@@ -155,6 +155,17 @@ func (g Gauge) uncertainty(reading quantity.GaugePressure, at quantity.Temperatu
 	return u
 }
 
+// repeatable is the part of a gauge's class by which it errs anew at each reading (common practice, no source).
+const repeatable = 0.2
+
+// Apart returns a reading as the certificate corrects it, and two standard uncertainties: each is new at every reading; bias is the
+// same for all that are taken one after the other. The gauge has its own temperature at. Pascals.
+func (g Gauge) Apart(reading quantity.GaugePressure, at quantity.Temperature) (corrected, each, bias quantity.GaugePressure) {
+	corrected = g.corrected(reading)
+	u := g.uncertainty(corrected, at)
+	return corrected, root(repeatable*u[0], u[1]), root(u[0], u[2])
+}
+
 // named describes a gauge of the choice below to somebody who looks for one.
 func (g Gauge) named(in Units) string {
 	return fmt.Sprintf("%s, 0 to %s, divisions of %s or finer", g.Accuracy, in.Pressure(g.Span), in.Pressure(g.Graduation))

@@ -77,7 +77,7 @@ func newRoot() *cobra.Command {
 		title    string
 		commands []*cobra.Command
 	}{
-		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newSettle(), newHold(), newBoard()}},
+		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newSettle(), newHold(), newTrace(), newBoard()}},
 		{"What the numbers say", []*cobra.Command{newPlan(), newNight(), newCapacity(), newTrend()}},
 		{"What was signed", []*cobra.Command{newCountersign(), newCorrect(), newWithdraw(), newAudit()}},
 		{"The book and its laptops", []*cobra.Command{newBook(), newHand(), newMeet()}},

@@ -142,8 +142,7 @@ func entry(m *ledger.Meaning, it *ledger.Item, add adder) {
 	for _, f := range it.Flags {
 		add(Warning, id, "%s", f)
 	}
-	if asset := ledger.GaugeOf(it.Body); asset != "" && it.Counts() {
-		done, _ := ledger.Done(it.Body)
+	if _, asset, done := ledger.Subject(it.Body); asset != "" && it.Counts() {
 		if g := m.Gauge(asset); g != nil && (done.Unix < g.Calibrated.Unix || done.Unix > g.Due.Unix) {
 			add(Warning, id, "gauge %s was out of calibration when it was read", asset)
 		}
