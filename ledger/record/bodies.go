@@ -204,6 +204,8 @@ type Reading struct {
 	Note            string  `cbor:"11,keyasint,omitempty"`
 	Override        string  `cbor:"12,keyasint,omitempty"` // why an unlikely value is right
 	Sheet           ID      `cbor:"13,keyasint,omitzero"`  // in force as far as the signer knew
+	// Seen is what was noticed beside the reading, in the words of a list that may grow.
+	Seen []string `cbor:"14,keyasint,omitempty"`
 }
 
 // Observation is one pressure with its temperature.
@@ -229,6 +231,7 @@ type Charge struct {
 	Note          string      `cbor:"11,keyasint,omitempty"`
 	Override      string      `cbor:"12,keyasint,omitempty"`
 	Sheet         ID          `cbor:"13,keyasint,omitzero"`
+	Seen          []string    `cbor:"14,keyasint,omitempty"`
 }
 
 // Correction replaces the body of a named entry; the original stays visible.

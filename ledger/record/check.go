@@ -168,6 +168,9 @@ func (t Time) check() error {
 // maxSoak is in minutes, some 69 days: beyond it a soak says nothing, and a duration could overflow.
 const maxSoak = 100_000
 
+// maxNoticed is how much can be noticed beside one reading.
+const maxNoticed = 20
+
 // optionalID are the ids that may be absent.
 var optionalID = []string{"LastID", "Sheet"}
 
@@ -274,6 +277,13 @@ func checkFields(v reflect.Value) error {
 		case string:
 			_, recall := v.Interface().(Recall) // names one of two
 			err = checkText(name, x, !slices.Contains(optionalText, name) && !recall || name == "Reason")
+		case []string:
+			if len(x) > maxNoticed {
+				err = malformed("%d things seen; at most %d", len(x), maxNoticed)
+			}
+			for _, words := range x {
+				err = errors.Join(err, checkText(name, words, true))
+			}
 		case UnitRef:
 			err = errors.Join(checkText("part", x.Part, true), checkText("serial", x.Serial, true))
 		case Observation:

@@ -525,6 +525,8 @@ func TestBadBodiesAreRefused(t *testing.T) {
 		"corrected body broken": {KindCorrection, Correction{Of: ID{1}, Kind: KindReading, Body: []byte{0xa0}, Reason: "x"}},
 		"corrects a correction": {KindCorrection, Correction{Of: ID{1}, Kind: KindCorrection, Body: []byte{0xa0}, Reason: "x"}},
 		"a float in correction": {KindCorrection, Correction{Of: ID{1}, Kind: "hologram", Body: []byte{0xa1, 1, 0xf9, 0x3c, 0}, Reason: "x"}},
+		"sees nothing":          {KindReading, mangle(func(r *Reading) { r.Seen = []string{""} })},
+		"sees too much":         {KindReading, mangle(func(r *Reading) { r.Seen = slices.Repeat([]string{"oil"}, maxNoticed+1) })},
 		"one value":             {KindTrace, func() any { b := good[KindTrace].(Trace); b.Drawn.Values = b.Drawn.Values[:1]; return b }()},
 		"falling seconds":       {KindSettling, func() any { b := good[KindSettling].(Settling); b.Seconds.Values = []int64{90, 30}; return b }()},
 		"unlike lengths":        {KindSettling, func() any { b := good[KindSettling].(Settling); b.Seconds.Values = []int64{1, 2, 3}; return b }()},
