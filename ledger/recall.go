@@ -1,6 +1,8 @@
 package ledger
 
 import (
+	"slices"
+
 	"example.org/chargehand/ledger/record"
 )
 
@@ -53,6 +55,11 @@ func (m *Meaning) GaugeRecall(asset string, at record.Time) (in *Recall) {
 	return in
 }
 
+// Recalled tells whether a gauge is recalled and was not entered again since.
+func (m *Meaning) Recalled(asset string) bool {
+	return slices.ContainsFunc(m.Recalls, func(r *Recall) bool { return r.Gauge == asset && r.Until == 0 })
+}
+
 // SheetRecall returns the recall that touches a sheet at a time, nil when none does.
 func (m *Meaning) SheetRecall(sheet record.ID, at record.Time) (in *Recall) {
 	for _, r := range m.Recalls {
@@ -61,4 +68,19 @@ func (m *Meaning) SheetRecall(sheet record.ID, at record.Time) (in *Recall) {
 		}
 	}
 	return in
+}
+
+// WithRecall returns what the book would mean with one more recall, which nobody has signed: to see what it touches before
+// anybody does. Only what is judged differs; the recall is no entry.
+func (m *Meaning) WithRecall(r record.Recall) *Meaning {
+	more := *m
+	more.Recalls = append(slices.Clone(m.Recalls), &Recall{Recall: r})
+	return &more
+}
+
+// WithoutRecall returns what the book would mean without one recall.
+func (m *Meaning) WithoutRecall(entry record.ID) *Meaning {
+	less := *m
+	less.Recalls = slices.DeleteFunc(slices.Clone(m.Recalls), func(r *Recall) bool { return r.ID == entry })
+	return &less
 }

@@ -50,6 +50,15 @@ func (c Cause) String() string {
 	return causeWords[c]
 }
 
+// Fault tells whether the cause is a fault of unit, gauge or entry. The others explain what was seen, and nothing is wrong.
+func (c Cause) Fault() bool {
+	switch c {
+	case TemperatureOnly, HotReading, AmbientShift, AllowedLoss:
+		return false
+	}
+	return true
+}
+
 // clue is a fact and what it weighs for a cause; against it when negative. As a guide: 1 is a hint, 2 makes it likely, 3 and
 // more settles it unless something speaks against it.
 type clue struct {

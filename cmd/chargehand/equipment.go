@@ -457,8 +457,11 @@ func inWords(body any) string {
 		}
 		return s + ")"
 	}
-	after := func(relieved string, fluid record.Amount, note string) string {
+	after := func(relieved string, fluid record.Amount, seen []string, note string) string {
 		s := fmt.Sprintf("; fluid side relieved by %s, %s seen", relieved, written(fluid))
+		if len(seen) > 0 {
+			s += "; noticed: " + strings.Join(seen, ", ")
+		}
 		if note != "" {
 			s += "; " + note
 		}
@@ -472,10 +475,10 @@ func inWords(body any) string {
 	case record.UnitRemoved:
 		return "taken off: " + b.Reason
 	case record.Reading:
-		return "gauge " + b.Gauge + " showed " + observed(b.Pressure, b.Temperature, b.TemperatureFrom, b.SoakMin) + after(b.Relieved, b.FluidPressure, b.Note)
+		return "gauge " + b.Gauge + " showed " + observed(b.Pressure, b.Temperature, b.TemperatureFrom, b.SoakMin) + after(b.Relieved, b.FluidPressure, b.Seen, b.Note)
 	case record.Charge:
 		return fmt.Sprintf("gauge %s: found %s, left %s, %s from bottle %s%s", b.Gauge, observed(b.AsFound.Pressure, b.AsFound.Temperature, b.AsFound.TemperatureFrom, b.AsFound.SoakMin),
-			observed(b.AsLeft.Pressure, b.AsLeft.Temperature, b.AsLeft.TemperatureFrom, b.AsLeft.SoakMin), b.Gas, b.Bottle, after(b.Relieved, b.FluidPressure, b.Note))
+			observed(b.AsLeft.Pressure, b.AsLeft.Temperature, b.AsLeft.TemperatureFrom, b.AsLeft.SoakMin), b.Gas, b.Bottle, after(b.Relieved, b.FluidPressure, b.Seen, b.Note))
 	case record.Sheet:
 		limits := fmt.Sprintf("a chart of %d rows", len(b.Chart))
 		if b.Charge != nil && b.Minus != nil && b.Plus != nil {
@@ -515,7 +518,7 @@ type gaugeJSON struct {
 	Accuracy    string  `json:"accuracy"`
 	Calibrated  string  `json:"calibrated"`
 	Due         string  `json:"due"`
-	State       string  `json:"state"` // "in calibration", "not yet calibrated" or "out of calibration"
+	State       string  `json:"state"` // "in calibration", "not yet calibrated", "out of calibration" or "recalled"
 	Certificate string  `json:"certificate,omitempty"`
 	Entry       string  `json:"entry"`
 }
@@ -534,7 +537,9 @@ func newGaugeList() *cobra.Command {
 			fmt.Fprintln(w, "GAUGE\tSPAN\tDIVISION\tACCURACY\tCALIBRATED\tDUE\tSTATE")
 			for _, g := range m.Gauges {
 				state := "in calibration"
-				if now.Unix < g.Calibrated.Unix {
+				if m.Recalled(g.Asset) {
+					state = "recalled"
+				} else if now.Unix < g.Calibrated.Unix {
 					state = "not yet calibrated"
 				} else if now.Unix > g.Due.Unix {
 					state = "out of calibration"

@@ -7,6 +7,7 @@ import (
 	"strings"
 	"time"
 
+	"example.org/chargehand/calc/fault"
 	"example.org/chargehand/calc/gas"
 	"example.org/chargehand/calc/quantity"
 	"example.org/chargehand/ledger/record"
@@ -223,5 +224,26 @@ func (m *minutes) Set(s string) error {
 	}
 	n := uint64(d / time.Minute)
 	m.n = &n
+	return nil
+}
+
+// remarks is a flag for what was noticed, in the words of calc/fault; it may be given again.
+type remarks struct{ is []string }
+
+func (r *remarks) String() string { return strings.Join(r.is, "; ") }
+func (r *remarks) Type() string   { return "words" }
+
+func (r *remarks) Set(s string) error {
+	what, err := fault.ParseRemark(s)
+	if err != nil {
+		var all []string
+		for _, x := range fault.Remarks() {
+			all = append(all, x.String())
+		}
+		return &valueError{fmt.Sprintf("%q is none of what can be noted", s), "Write one of: " + strings.Join(all, "; "), nil}
+	}
+	if !slices.Contains(r.is, what.String()) {
+		r.is = append(r.is, what.String())
+	}
 	return nil
 }

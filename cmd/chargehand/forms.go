@@ -52,6 +52,7 @@ type circumstances struct {
 	field                                 *typed[quantity.Elevation]
 	done                                  stamp
 	sheet                                 record.ID
+	seen                                  remarks
 }
 
 func newCircumstances() circumstances {
@@ -65,6 +66,7 @@ func (c *circumstances) flags(f *pflag.FlagSet) {
 	f.Var(c.ambient, "ambient", "station pressure, absolute")
 	f.Var(c.field, "elevation", "elevation of the field, for its standard pressure")
 	f.Var(&c.done, "done", "when it was done (else now)")
+	f.Var(&c.seen, "seen", "what you noticed, such as \"oil at the gas valve\"; once for each (see 'faults --help' for the list)")
 	f.StringVar(&c.note, "note", "", "anything worth keeping")
 	f.StringVar(&c.override, "unlikely-because", "", "why a value that looks wrong is right")
 }
@@ -141,7 +143,7 @@ func (r *readingForm) wants(m *ledger.Meaning) []want {
 
 func (r *readingForm) load(body any) error {
 	b := body.(record.Reading)
-	r.soak.n = b.SoakMin
+	r.soak.n, r.seen.is = b.SoakMin, b.Seen
 	for _, err := range []error{r.pressure.load(&b.Pressure), r.temperature.load(&b.Temperature), r.from.Set(b.TemperatureFrom)} {
 		if err != nil {
 			return err
@@ -159,7 +161,7 @@ func (r *readingForm) body(m *ledger.Meaning) (any, error) {
 		return nil, err
 	}
 	return record.Reading{Unit: u.Ref, Gauge: r.gauge, Pressure: *r.pressure.amount(), Temperature: *r.temperature.amount(), TemperatureFrom: r.from.is,
-		SoakMin: r.soak.n, Ambient: ambient, Relieved: r.relieved, FluidPressure: *r.fluid.amount(), Done: r.done.record(), Note: r.note, Override: r.override, Sheet: r.sheet}, nil
+		SoakMin: r.soak.n, Ambient: ambient, Relieved: r.relieved, FluidPressure: *r.fluid.amount(), Done: r.done.record(), Note: r.note, Override: r.override, Sheet: r.sheet, Seen: r.seen.is}, nil
 }
 
 type chargeForm struct {
@@ -221,7 +223,7 @@ func (c *chargeForm) wants(m *ledger.Meaning) []want {
 
 func (c *chargeForm) load(body any) error {
 	b := body.(record.Charge)
-	c.bottle, c.gas = b.Bottle, b.Gas
+	c.bottle, c.gas, c.seen.is = b.Bottle, b.Gas, b.Seen
 	for _, err := range []error{c.found.load(b.AsFound), c.left.load(b.AsLeft)} {
 		if err != nil {
 			return err
@@ -253,7 +255,7 @@ func (c *chargeForm) body(m *ledger.Meaning) (any, error) {
 			"Do not mix gases: if another gas went in, follow the manual and raise it with your lead; if it is a slip, give the right one")
 	}
 	return record.Charge{Unit: u.Ref, Gauge: c.gauge, AsFound: c.found.record(), AsLeft: c.left.record(), Ambient: ambient, Relieved: c.relieved, FluidPressure: *c.fluid.amount(),
-		Bottle: c.bottle, Gas: c.gas, Done: done, Note: c.note, Override: c.override, Sheet: c.sheet}, nil
+		Bottle: c.bottle, Gas: c.gas, Done: done, Note: c.note, Override: c.override, Sheet: c.sheet, Seen: c.seen.is}, nil
 }
 
 type sheetForm struct {
