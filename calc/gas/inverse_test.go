@@ -75,3 +75,24 @@ func TestEvacuatedVessel(t *testing.T) {
 		}
 	}
 }
+
+// The quick temperature is that of the full inversion, from near and from far.
+func TestTemperatureAtEnergy(t *testing.T) {
+	rapid.Check(t, func(t *rapid.T) {
+		g := rapid.SampledFrom([]*Model{Nitrogen(), DryAir()}).Draw(t, "gas")
+		at := quantity.Temperature(rapid.Float64Range(201, 419).Draw(t, "K"))
+		p := quantity.Pressure(rapid.Float64Range(0.1e6, 60e6).Draw(t, "Pa"))
+		rho, err := g.Density(at, p)
+		if err != nil {
+			t.Skip(err)
+		}
+		s, err := g.State(at, rho)
+		if err != nil {
+			t.Skip(err)
+		}
+		near := quantity.Temperature(rapid.Float64Range(150, 500).Draw(t, "near"))
+		if got, err := g.TemperatureAtEnergy(rho, s.U, near); err != nil || math.Abs(float64(got/at)-1) > 1e-10 {
+			t.Fatalf("%v K, %v; want %v K", got, err, at)
+		}
+	})
+}

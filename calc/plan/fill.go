@@ -63,7 +63,7 @@ func (in *ChargeInput) fill(rho0, rho1, rhoB float64, target quantity.Pressure) 
 		return nil, err
 	}
 	insulated := *f
-	insulated.k1 = 0
+	insulated.k1, insulated.tolerance = 0, f.tolerance*coarse
 	if last, err := insulated.run(took, nil); err == nil {
 		if s, err := f.at(f.m0+f.added, last.gas); err == nil {
 			out.Adiabatic = &Bound{s.P.Gauge(in.Ambient), s.T}
@@ -72,10 +72,15 @@ func (in *ChargeInput) fill(rho0, rho1, rhoB float64, target quantity.Pressure) 
 	return out, f.settle(out, took, end, hot, target, quantity.Pressure(in.Within))
 }
 
+// coarse is by how much the trials of a duration and the bounds may be less exact than the plan itself: to 1e-6 of the gas's energy,
+// about 0.02 psi of a dial.
+const coarse = 100
+
 // span fills in the hot stops of a gas that gives off its heat twice as fast and half as fast. Where the slower one leaves the limits
 // of the gas, the hot stop itself stands in.
 func (out *Fill) span(f filling, took float64) error {
 	out.HotLow, out.HotHigh = out.HotStop, out.HotStop
+	f.tolerance *= coarse
 	k1 := f.k1
 	for _, times := range []float64{2, 0.5} {
 		f.k1 = k1 * times
@@ -107,12 +112,13 @@ func (f *filling) at(mass, energy float64) (gas.State, error) {
 
 // slope is the balance of energy at a mass in the unit and a mass flow in kg/s.
 func (f *filling) slope(mass, flow float64, y vec) (vec, error) {
-	s, err := f.at(mass, y.gas)
+	t, err := f.g.TemperatureAtEnergy(gas.Density(mass/f.volume), y.gas/mass, f.near)
 	if err != nil {
 		return vec{}, err
 	}
+	f.near = t
 	excess := y.shell / f.shell
-	toShell := f.k1 * (float64(s.T-f.ta) - excess)
+	toShell := f.k1 * (float64(t-f.ta) - excess)
 	toAmbient := f.k2 * excess
 	in := 0.0
 	if flow > 0 {
@@ -151,7 +157,8 @@ func (f *filling) note(trace *[]Moment, t, mass float64, y vec) bool {
 
 // durationAt returns the seconds in which the dial rises at a mean rate in Pa/s from p0 to the hot stop, which itself falls with the
 // duration. rise is the settled rise. A trial too short for the limits of the gas counts as too short.
-func (f *filling) durationAt(rate, p0, rise float64) (float64, error) {
+func (f filling) durationAt(rate, p0, rise float64) (float64, error) {
+	f.tolerance *= 10 * coarse // only how long the fill takes hangs on it, to 1e-4
 	shortest, longest := 1.0, longest.Seconds()
 	over := func(took float64) (float64, error) {
 		end, err := f.run(took, nil)
@@ -179,7 +186,7 @@ func (f *filling) durationAt(rate, p0, rise float64) (float64, error) {
 		return 0, err
 	}
 	// False position with the Illinois weight, by halves while the lower end is not finite.
-	for side := 0; high-low > 1e-6*high; {
+	for side := 0; high-low > 1e-5*high; {
 		mid := low + (high-low)/2
 		if !math.IsInf(atLow, 1) {
 			mid = high - atHigh*(high-low)/(atHigh-atLow)
@@ -191,7 +198,7 @@ func (f *filling) durationAt(rate, p0, rise float64) (float64, error) {
 		if err != nil {
 			return 0, err
 		}
-		if math.Abs(v) <= 1e-7*(rate*mid) { // Pa: far below any dial
+		if math.Abs(v) <= 1e-5*(rate*mid) { // Pa: below any dial
 			high = mid
 			break
 		}
