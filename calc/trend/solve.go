@@ -215,8 +215,11 @@ func leastSquares(a *mat.Dense, y []float64) (*solution, error) {
 	for i := range n {
 		e := y[i] - hat.AtVec(i)
 		s.chi2 += e * e
-		h := mat.Norm(thin.RowView(i), 2)
-		if free := 1 - h*h; free > 1e-9 {
+		leverage := 0.0
+		for _, x := range thin.RawRowView(i) {
+			leverage += x * x
+		}
+		if free := 1 - leverage; free > 1e-9 {
 			s.left[i] = e / math.Sqrt(free)
 		}
 	}

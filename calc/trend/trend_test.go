@@ -409,11 +409,17 @@ func TestNothingThatIsNoNumberComesOut(t *testing.T) {
 }
 
 func BenchmarkTrend(b *testing.B) {
+	for _, n := range []int{10, 200, 500} {
+		b.Run(fmt.Sprint(n), func(b *testing.B) { benchmarkTrend(b, n) })
+	}
+}
+
+func benchmarkTrend(b *testing.B, n int) {
 	var ps []Point
-	for i := range 200 {
+	for i := range n {
 		d := float64(3 * i)
 		ps = append(ps, Point{At: after(d * day), Pressure: quantity.GaugePressure((1500 - 0.5*d + 7*math.Sin(1e3*d)) * psi), U: 10 * psi,
-			Gauge: fmt.Sprint("G", i/50), Bias: 17 * psi, Warm: quantity.GaugePressure(i%7-3) * psi, Segment: fmt.Sprint("S", i/100)})
+			Gauge: fmt.Sprint("G", i/10%3), Bias: 17 * psi, Warm: quantity.GaugePressure(i%7-3) * psi, Segment: fmt.Sprint("S", i/100)})
 	}
 	for b.Loop() {
 		if _, err := New(ps, Options{}); err != nil {
