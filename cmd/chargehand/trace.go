@@ -374,8 +374,8 @@ func tracePicture(t *verdict.Traced, b record.Trace, in calc.Units) plot.Trace {
 	if x == "" {
 		x = "fluid drawn, " + b.Drawn.Unit
 	}
-	p := plot.Trace{Title: fmt.Sprintf("%s: the fall breaks near %s; %s", unitName(t.Unit), in.Pressure(f.Charge), trace.Indication), Unit: unit, X: x,
-		Break: &plot.Break{X: f.Break, Charge: v(f.Charge), U: v(max(f.High-f.Charge, f.Charge-f.Low))}}
+	p := plot.Trace{Title: fmt.Sprintf("%s: points to a charge of %s; %s", unitName(t.Unit), in.Pressure(f.Charge), trace.Indication), Unit: unit, X: x,
+		Break: &plot.Break{X: f.Break, Shown: v(f.Shown), Charge: v(f.Charge), Low: v(f.Low), High: v(f.High)}}
 	p.Collapse = append(p.Collapse, plot.XY{X: f.Break, Y: v(f.Shown)})
 	pairs := slices.Clone(t.Pairs)
 	for _, q := range pairs {

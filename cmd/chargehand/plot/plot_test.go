@@ -64,7 +64,7 @@ func fill() Fill {
 }
 
 func trace() Trace {
-	t := Trace{Title: "The fall breaks at 1,247 psi +/- 35: the charge is in limits, to be confirmed on the gas side", Unit: "psi", X: "strokes of the hand lever", Break: &Break{14.3, 1247, 35}}
+	t := Trace{Title: "The fall breaks at 1,247 psi +/- 35: the charge is in limits, to be confirmed on the gas side", Unit: "psi", X: "strokes of the hand lever", Break: &Break{14.3, 1240, 1247, 1212, 1290}}
 	for s := 0.; s <= 18; s++ {
 		p := 3000 / (1 + 0.0983*s)
 		if s > 14.3 {
@@ -86,7 +86,7 @@ var pictures = map[string]struct {
 	"trend":    {trend(), []string{"charge corrected to 70 F, psi", "upper limit 1,350", "target 1,250", "lower limit 1,150", "forecast", "allowed loss", "charged 1,163 to 1,256", "41 F typed as 41 C?", "leaves the limits 2026-04-19 to 2026-05-06", "UTC+02:00", "date, 2026", "20 Apr"}},
 	"capacity": {capacity(), []string{"fluid delivered, in3", "slow (isothermal)", "fast (isentropic)", "5 brake applications: 18.0 in3", "worst: 12.8 in3 at -40 F", "temperature of gas and fluid, F"}},
 	"fill":     {fill(), []string{"gas pressure, psi", "temperature, F", "stop here: 1,344 psi", "target once settled, 1,250", "no heat lost", "no heating", "shell", "minutes"}},
-	"trace":    {trace(), []string{"pressure, psi", "strokes of the hand lever", "charge 1,247 +/- 35 psi", "the fall breaks here", "3,000"}},
+	"trace":    {trace(), []string{"pressure, psi", "strokes of the hand lever", "charge 1,247 psi (1,212 to 1,290)", "the fall breaks here", "3,000"}},
 }
 
 func svg(t fatal, p Picture, s Scheme) []byte {
@@ -419,7 +419,7 @@ func TestAnyOtherPicture(t *testing.T) {
 			s := Sample{q.X, q.Y, number("gas"), number("wall")}
 			x.Samples, x.Bounds[0].Points = append(x.Samples, s), append(x.Bounds[0].Points, s)
 		}
-		tr.Break = &Break{number("break"), number("charge"), rapid.Float64Range(0, 100).Draw(rt, "u")}
+		tr.Break = &Break{number("break"), number("shown"), number("charge"), number("low"), number("high")}
 		c.Worst, c.Demand = &Worst{number("at"), number("worst")}, number("demand")
 		for _, p := range []Picture{tr, c, x} {
 			if _, complaints := read(rt, svg(rt, p, Dark)); len(complaints) > 0 {
@@ -444,7 +444,7 @@ func TestNoEndlessWork(t *testing.T) {
 	if out := svg(t, x, Light); len(out) > 1<<20 {
 		t.Errorf("a figure of %d bytes", len(out))
 	}
-	tr := Trace{Title: "x", Unit: "bar", X: "strokes", Points: []XY{{0, 1}, {1, 1.0000001}}, Break: &Break{0.5, 1, 1e12}}
+	tr := Trace{Title: "x", Unit: "bar", X: "strokes", Points: []XY{{0, 1}, {1, 1.0000001}}, Break: &Break{0.5, 1, 1, -1e12, 1e12}}
 	if out := svg(t, tr, Light); len(out) > 1<<20 {
 		t.Errorf("a figure of %d bytes", len(out))
 	}

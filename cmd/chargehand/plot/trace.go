@@ -16,8 +16,9 @@ type Trace struct {
 // XY is a pressure Y at X.
 type XY struct{ X, Y float64 }
 
-// Break is where the fall breaks: the charge with its expanded uncertainty.
-type Break struct{ X, Charge, U float64 }
+// Break is where the fall breaks, what the gauge showed there, and the charge that this points to with its 95 % interval, which
+// need not be even about it; Low and High alike for none.
+type Break struct{ X, Shown, Charge, Low, High float64 }
 
 func (t Trace) figure() (figure, error) {
 	if len(t.Points) == 0 {
@@ -53,16 +54,14 @@ func (t Trace) figure() (figure, error) {
 	}
 	if b := t.Break; b != nil {
 		level := func(v float64) []pt { return []pt{{low, v}, {high, v}} }
-		if b.U > 0 {
-			p.spans = append(p.spans, span{level(b.Charge - b.U), level(b.Charge + b.U), spread})
-			f.foot += " Shaded: its uncertainty (k = 2)."
+		words := fmt.Sprintf("charge %s %s", number(b.Charge, figures(b.Charge)), t.Unit)
+		if b.High > b.Low {
+			p.spans = append(p.spans, span{level(b.Low), level(b.High), spread})
+			f.foot += " Shaded: where the charge lies, 95 %."
+			words += fmt.Sprintf(" (%s to %s)", number(b.Low, figures(b.Charge)), number(b.High, figures(b.Charge)))
 		}
-		words := "charge " + number(b.Charge, figures(b.Charge))
-		if b.U > 0 {
-			words += " +/- " + number(b.U, figures(b.Charge))
-		}
-		p.strokes = append(p.strokes, stroke{pts: level(b.Charge), role: warn, width: 1.6, dash: chain, label: fmt.Sprintf("%s %s", words, t.Unit)})
-		p.spots = append(p.spots, spot{pt: pt{b.X, b.Charge}, shape: square, role: warn, note: "the fall breaks here"})
+		p.strokes = append(p.strokes, stroke{pts: level(b.Charge), role: warn, width: 1.6, dash: chain, label: words})
+		p.spots = append(p.spots, spot{pt: pt{b.X, b.Shown}, shape: square, role: warn, note: "the fall breaks here"})
 	}
 	f.panels = []panel{p}
 	f.x = axis{title: t.X, min: low, max: high, ticks: roundTicks(low, high, 8)}
