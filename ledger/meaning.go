@@ -3,6 +3,7 @@ package ledger
 import (
 	"cmp"
 	"fmt"
+	"reflect"
 	"slices"
 
 	"example.org/chargehand/ledger/record"
@@ -544,9 +545,28 @@ func (m *Meaning) Gauge(asset string) *Gauge {
 }
 
 // SheetAt returns the sheet of a part in force at a time: the one of the latest effective date not after it, and of several
-// with one date the last in display order. A recalled one gives way to any that was entered by somebody who knew of the recall. nil
-// when none is in force.
+// with one date the one that had seen the others, or where none had, the last in display order: see Contested. A recalled one
+// gives way to any that was entered by somebody who knew of the recall. nil when none is in force.
 func (m *Meaning) SheetAt(part string, at record.Time) *Sheet {
+	if in := m.inForce(part, at); len(in) > 0 {
+		return in[len(in)-1]
+	}
+	return nil
+}
+
+// Contested returns the sheets that say something else than SheetAt's, from the same date, by somebody who had not seen it and
+// whom it had not seen. A lead settles them by a sheet that has seen all of them, or by withdrawing one.
+func (m *Meaning) Contested(part string, at record.Time) []*Sheet {
+	in := m.inForce(part, at)
+	if len(in) < 2 {
+		return nil
+	}
+	last := in[len(in)-1]
+	return slices.DeleteFunc(in[:len(in)-1], func(s *Sheet) bool { return reflect.DeepEqual(s.Sheet, last.Sheet) })
+}
+
+// inForce returns the sheets of the latest effective date of which none had seen another.
+func (m *Meaning) inForce(part string, at record.Time) []*Sheet {
 	var in *Sheet
 	for _, s := range m.sheets[part] {
 		if s.Effective.Unix > at.Unix {
@@ -560,7 +580,22 @@ func (m *Meaning) SheetAt(part string, at record.Time) *Sheet {
 		}
 		in = s
 	}
-	return in
+	if in == nil {
+		return nil
+	}
+	recalled := m.SheetRecall(in.ID, at) != nil
+	var same []*Sheet
+	for _, s := range m.sheets[part] {
+		if s.Effective.Unix == in.Effective.Unix && (m.SheetRecall(s.ID, at) != nil) == recalled {
+			same = append(same, s)
+		}
+	}
+	if len(same) < 2 {
+		return same
+	}
+	return slices.DeleteFunc(slices.Clone(same), func(s *Sheet) bool {
+		return slices.ContainsFunc(same, func(o *Sheet) bool { return o != s && m.Saw(o.ID, s.ID) })
+	})
 }
 
 func either(roles []record.Role) string {

@@ -113,6 +113,7 @@ type sheetJSON struct {
 	Revision   string      `json:"revision"`
 	Effective  string      `json:"effective"`
 	InForce    bool        `json:"in_force"`
+	Contested  bool        `json:"contested,omitempty"` // another says otherwise from the same day
 	Gas        string      `json:"gas"`
 	ReferenceF float64     `json:"reference_f"`
 	LowPsi     float64     `json:"low_psi,omitempty"`
@@ -168,6 +169,12 @@ func sheetFacts(m *ledger.Meaning, s *ledger.Sheet) sheetJSON {
 		SignedBy: handName(m, m.Item(s.ID).Key()), written: s.Sheet}
 	in := m.SheetAt(s.Part, now)
 	j.InForce = in != nil && in.ID == s.ID
+	for _, o := range m.Contested(s.Part, now) {
+		if o.ID == s.ID {
+			j.InForce = true
+		}
+		j.Contested = j.Contested || j.InForce
+	}
 	if j.limits, j.unusable = verdict.Limits(s.Sheet, verdict.UnitsOf(m)); j.unusable != nil {
 		return j
 	}
@@ -187,6 +194,9 @@ func (s sheetJSON) print(w io.Writer, in calc.Units) {
 	state := "not in force"
 	if s.InForce {
 		state = "in force"
+	}
+	if s.Contested {
+		state = "CONTESTED: another sheet says otherwise from the same day; a lead settles it by a sheet that has seen both, or by withdrawing one"
 	}
 	fmt.Fprintf(w, "sheet       %s: %s rev %s, effective %s, %s\n", s.Part, s.Document, s.Revision, s.Effective, state)
 	if s.unusable != nil {

@@ -58,6 +58,11 @@ func (x *Observed) resolve(m *ledger.Meaning, o observation) (err error) {
 	if x.Sheet = m.SheetAt(o.unit.Part, o.done); x.Sheet == nil {
 		return fmt.Errorf("no sheet for part %s was in force at the time of the work", o.unit.Part)
 	}
+	return x.under(m, o)
+}
+
+// under finds the rest for the sheet that x holds.
+func (x *Observed) under(m *ledger.Meaning, o observation) (err error) {
 	if r := m.SheetRecall(x.Sheet.ID, o.done); r != nil {
 		return fmt.Errorf("sheet %s rev %s was recalled: %s", x.Sheet.Document, x.Sheet.Revision, r.Reason)
 	}

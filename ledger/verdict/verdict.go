@@ -6,6 +6,8 @@ package verdict
 import (
 	"fmt"
 	"runtime"
+	"slices"
+	"strings"
 	"sync"
 	"time"
 
@@ -22,6 +24,8 @@ type Judged struct {
 	Unit  record.UnitRef
 	calc.Verdict
 	Sheet *ledger.Sheet // nil when none was in force at the time of the work
+	// Contested are the sheets that claim the same time beside Sheet, which gives the worst verdict of them.
+	Contested []*ledger.Sheet
 }
 
 // Judge returns the verdict on a reading or charge. What cannot be used is a reason of a verdict of not assessable. The
@@ -38,13 +42,37 @@ func Judge(m *ledger.Meaning, id record.ID, body any) (Judged, error) {
 	}
 	var x Observed
 	err := x.resolve(m, o)
-	j := Judged{Entry: id, Unit: o.unit, Sheet: x.Sheet}
-	if err != nil {
-		j.Verdict = notAssessable(err.Error())
-	} else {
-		j.Verdict = calc.Judge(x.Limits, x.Gauge, x.Reading, calc.GuardBanded())
+	j := Judged{Entry: id, Unit: o.unit, Sheet: x.Sheet, Verdict: x.judge(err)}
+	for _, s := range m.Contested(o.unit.Part, o.done) {
+		y := Observed{Sheet: s}
+		v := y.judge(y.under(m, o))
+		j.Contested = append(j.Contested, s)
+		if gravity(v.Class) > gravity(j.Class) {
+			j.Verdict, j.Sheet, j.Contested[len(j.Contested)-1] = v, s, j.Sheet
+		}
+	}
+	if len(j.Contested) > 0 {
+		var others []string
+		for _, s := range j.Contested {
+			others = append(others, fmt.Sprintf("%s rev %s (entry %s)", s.Document, s.Revision, s.ID.Short()))
+		}
+		j.Sentence += fmt.Sprintf(" The sheet is contested: %s holds from the same day and says otherwise; the worst verdict counts until a lead settles it.", strings.Join(others, " and "))
+		j.Next = "have a lead settle which sheet holds; until then " + j.Next
 	}
 	return j, nil
+}
+
+// judge is the verdict on what was resolved, or why there is none.
+func (x *Observed) judge(unresolved error) calc.Verdict {
+	if unresolved != nil {
+		return notAssessable(unresolved.Error())
+	}
+	return calc.Judge(x.Limits, x.Gauge, x.Reading, calc.GuardBanded())
+}
+
+// gravity orders classes from the safest to assume to the worst.
+func gravity(c calc.Class) int {
+	return slices.Index([]calc.Class{calc.Pass, calc.ConditionalPass, calc.NotMeasurable, calc.NotAssessable, calc.ConditionalFail, calc.Fail}, c)
 }
 
 func ofReading(b record.Reading) observation {

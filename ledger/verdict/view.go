@@ -47,6 +47,9 @@ func rests(m *ledger.Meaning, id record.ID) []record.ID {
 			add(r.ID)
 		}
 	}
+	for _, s := range m.Contested(ref.Part, done) {
+		add(s.ID)
+	}
 	if g := m.Gauge(gauge); g != nil {
 		add(g.ID)
 		if r := m.GaugeRecall(gauge, done); r != nil {
