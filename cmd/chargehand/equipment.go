@@ -500,6 +500,45 @@ func inWords(body any) string {
 	case record.Gauge:
 		return fmt.Sprintf("gauge %s, 0 to %s, %s, divisions of %s, calibrated %s, due %s", b.Asset, written(b.Span), b.Accuracy, written(b.Graduation), day(b.Calibrated), day(b.Due))
 	}
+	return otherwise(body)
+}
+
+// otherwise words the kinds that are about no equipment.
+func otherwise(body any) string {
+	switch b := body.(type) {
+	case record.Founding:
+		return fmt.Sprintf("founded %q, by %s", b.Title, b.Name)
+	case record.HandAdmitted:
+		return fmt.Sprintf("admitted %s as %s, key %s", b.Name, roleList(b.Roles), b.Key.Short())
+	case record.KeyAdded:
+		return fmt.Sprintf("another key %s for hand %s", b.Key.Short(), b.Hand.Short())
+	case record.KeyRetired:
+		return fmt.Sprintf("retired key %s after number %d: %s", b.Key.Short(), b.LastSeq, b.Reason)
+	case record.Correction:
+		return fmt.Sprintf("corrects entry %s: %s", b.Of.Short(), b.Reason)
+	case record.Withdrawal:
+		return fmt.Sprintf("withdraws entry %s: %s", b.Of.Short(), b.Reason)
+	case record.Countersign:
+		var of []string
+		for _, id := range b.Of {
+			of = append(of, id.Short())
+		}
+		return fmt.Sprintf("%s: entries %s", b.Meaning, strings.Join(of, ", "))
+	case record.Settling:
+		return fmt.Sprintf("gauge %s: %d readings while it settled, valve closed %s", b.Gauge, len(b.Pressures.Values), clock(b.Closed))
+	case record.Hold:
+		return fmt.Sprintf("hold test from entry %s to %s, limit %s by %s", b.Start.Short(), b.End.Short(), written(b.Limit), b.Document)
+	case record.Trace:
+		return fmt.Sprintf("gauge %s: bleed-down of %d readings at %s", b.Gauge, len(b.Pressures.Values), written(b.Temperature))
+	case record.Recall:
+		what := "gauge " + b.Gauge
+		if b.Gauge == "" {
+			what = "sheet " + b.Sheet.Short()
+		}
+		return fmt.Sprintf("recalls %s since %s: %s", what, clock(b.Since), b.Reason)
+	case record.Unknown:
+		return "written by a newer chargehand"
+	}
 	return fmt.Sprintf("%T", body)
 }
 

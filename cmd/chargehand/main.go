@@ -79,7 +79,7 @@ func newRoot() *cobra.Command {
 	}{
 		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newSettle(), newHold(), newTrace(), newBoard()}},
 		{"What the numbers say", []*cobra.Command{newPlan(), newNight(), newCapacity(), newTrend(), newFaults()}},
-		{"What was signed", []*cobra.Command{newCountersign(), newCorrect(), newWithdraw(), newRecall(), newAudit()}},
+		{"What was signed", []*cobra.Command{newCountersign(), newCorrect(), newWithdraw(), newRecall(), newRecord(), newExport(), newAudit()}},
 		{"The book and its laptops", []*cobra.Command{newBook(), newHand(), newMeet()}},
 		{"Equipment", []*cobra.Command{newUnit(), newGauge(), newSheet(), newBottle()}},
 		{"Without a book", []*cobra.Command{newConvert(), newProve(), newRehearse(), newVersion()}},
