@@ -34,7 +34,7 @@ real command with its real output; a step that does not go as it should ends the
 		if err != nil {
 			return err
 		}
-		log, err := os.Create(filepath.Join(dir, "transcript.txt"))
+		log, err := os.Create(filepath.Join(dir, "shift.log"))
 		if err != nil {
 			return err
 		}
@@ -166,7 +166,7 @@ func asTyped(prompt string, args []string) string {
 	return strings.ReplaceAll(fold(prompt, words, storyWidth-2, "    "), "\n", " \\\n")
 }
 
-// do runs a command that must end with a status, and keeps it for the transcript.
+// do runs a command that must end with a status, and keeps it for the log.
 func (r *rehearsal) do(p player, want int, args ...string) string {
 	if r.err != nil {
 		return ""
@@ -177,7 +177,7 @@ func (r *rehearsal) do(p player, want int, args ...string) string {
 	return out.String()
 }
 
-// check writes a finished command to the transcript, and ends the rehearsal when it did not go as expected.
+// check writes a finished command to the log, and ends the rehearsal when it did not go as expected.
 func (r *rehearsal) check(p player, full []string, want, got int, output string) {
 	if r.err != nil {
 		return

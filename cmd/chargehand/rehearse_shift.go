@@ -20,7 +20,7 @@ const rightOnTheDial = "1250psi"
 func (r *rehearsal) shift() {
 	asha, ben, cato := r.enter("laptop-1", "asha"), r.enter("laptop-2", "ben"), r.enter("laptop-2", "cato")
 	r.say("A cold shift at Dry Creek. The field, its people, aircraft and manuals are invented; the commands are real, run just " +
-		"now, and print what you see. Left out are --book, --passphrase-file and lines that tell nothing new: transcript.txt " +
+		"now, and print what you see. Left out are --book, --passphrase-file and lines that tell nothing new: shift.log " +
 		"has them. Keys open at once here; a real one takes about a second, so that guessing is slow.")
 	r.outset(asha)
 	r.joining(asha, ben, cato)

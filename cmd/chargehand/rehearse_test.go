@@ -37,7 +37,7 @@ func TestRehearsalStops(t *testing.T) {
 				t.Errorf("told after the error: %q", out.String())
 			}
 			if n := strings.Count(log.String(), "(exit status"); n > 1 {
-				t.Errorf("%d commands in the transcript, want the one that failed: %s", n, log.String())
+				t.Errorf("%d commands in the log, want the one that failed: %s", n, log.String())
 			}
 		})
 	}
