@@ -21,6 +21,7 @@ type Meaning struct {
 	Bottles  []*Bottle // by name
 	Entries  []Item    // all entries held, in display order
 	Recalls  []*Recall // that stand, in display order
+	Snags    []*Snag   // all that count, in display order
 	items    map[record.ID]int
 	hands    map[record.KeyID]*Hand // by each key
 	units    map[record.UnitRef]*Unit
@@ -111,6 +112,7 @@ func Fold(book record.BookID, entries []record.Verified) *Meaning {
 	m.people()
 	m.equipment()
 	m.recalls()
+	m.snags()
 	return m
 }
 
@@ -219,6 +221,26 @@ func (m *Meaning) refuse(n *node, it *Item, before map[record.ID]*Item, roles []
 			return why
 		}
 		return m.knowsGauge(n, b.Gauge, before)
+	case record.SnagCleared:
+		t, why := target(b.Of)
+		if why == "" && t.Entry().Kind != record.KindSnag {
+			why = fmt.Sprintf("a %s is no snag", t.Entry().Kind)
+		}
+		return why
+	case record.Handover:
+		if b.Takes == (record.ID{}) {
+			return ""
+		}
+		t, why := target(b.Takes)
+		switch {
+		case why != "":
+			return why
+		case t.Entry().Kind != record.KindHandover:
+			return fmt.Sprintf("a %s hands nothing over", t.Entry().Kind)
+		case t.Hand == it.Hand:
+			return "nobody takes over from themselves"
+		}
+		return ""
 	case record.Hold:
 		return testsOne(target, b)
 	default:
@@ -237,6 +259,8 @@ func (m *Meaning) namesKnown(n *node, body any, before map[record.ID]*Item) stri
 		return m.knows(n, b.Unit, "", b.When, before)
 	case record.UnitRemoved:
 		return m.knows(n, b.Unit, "", b.When, before)
+	case record.Snag:
+		return m.knows(n, b.Unit, "", b.Found, before)
 	}
 	return ""
 }
@@ -334,7 +358,11 @@ func correctable(k record.Kind) bool {
 
 // withdrawable are the kinds that can be taken out of force but not corrected.
 func withdrawable(k record.Kind) bool {
-	return k == record.KindCountersign || k == record.KindHold || k == record.KindRecall
+	switch k {
+	case record.KindCountersign, record.KindHold, record.KindRecall, record.KindSnag, record.KindSnagCleared:
+		return true
+	}
+	return false
 }
 
 // lateAfter is the gap between work and signature from which an entry is marked late: a shift.

@@ -28,6 +28,9 @@ var maySign = map[record.Kind][]record.Role{
 	record.KindHold:           {record.RoleTechnician, record.RoleInspector},
 	record.KindTrace:          {record.RoleTechnician, record.RoleInspector},
 	record.KindRecall:         {record.RoleLead, record.RoleInspector},
+	record.KindSnag:           {record.RoleLead, record.RoleTechnician, record.RoleInspector},
+	record.KindSnagCleared:    {record.RoleLead, record.RoleTechnician, record.RoleInspector},
+	record.KindHandover:       {record.RoleLead, record.RoleTechnician, record.RoleInspector},
 }
 
 // MayRoles returns the roles that may sign a kind, nil for the founding entry and for kinds this version does not know.

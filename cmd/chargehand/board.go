@@ -41,6 +41,7 @@ type boardRow struct {
 	LossPsiPerDay *float64      `json:"loss_psi_per_day,omitempty"`
 	Loss          string        `json:"loss,omitempty"` // in words, with its interval
 	Forecast      *forecastJSON `json:"forecast,omitempty"`
+	Snags         []string      `json:"snags,omitempty"` // open ones
 	judged        verdict.Judged
 	watched       verdict.Watched
 	urgency       int
@@ -81,6 +82,9 @@ func newBoard() *cobra.Command {
 			if r.urgency < urgency(nil) {
 				fmt.Fprintf(cmd.OutOrStdout(), "\n%s, entry %.8s: %s\n", r.Unit, r.Entry, r.Next)
 			}
+			for _, s := range r.Snags {
+				fmt.Fprintf(cmd.OutOrStdout(), "\n%s: snag: %s\n", r.Unit, s)
+			}
 			if r.Loss != "" {
 				fmt.Fprintf(cmd.OutOrStdout(), "\n%s: %s", r.Unit, r.Loss)
 				if c := r.watched.Forecast; c != nil {
@@ -108,6 +112,11 @@ func board(m *ledger.Meaning) []boardRow {
 				if j.Class != calc.NotAssessable {
 					r.CorrectedPsi, r.LowPsi, r.HighPsi = inPsi(j.Corrected), inPsi(j.Low), inPsi(j.High)
 				}
+			}
+		}
+		for _, s := range m.Snags {
+			if s.Unit == u.Ref && s.Open() {
+				r.Snags = append(r.Snags, fmt.Sprintf("%s (entry %s)", s.What, s.ID.Short()))
 			}
 		}
 		r.watched = watched[i]

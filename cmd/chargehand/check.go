@@ -108,10 +108,7 @@ func (o *judging) run(cmd *cobra.Command, args []string, kind record.Kind, f for
 		if body, err = f.body(m); err != nil { // with the reason and the sheet
 			return err
 		}
-		w := cmd.OutOrStdout()
-		if o.asJSON {
-			w = io.Discard
-		}
+		w := quietWith(cmd, o.asJSON)
 		if ch, ok := body.(record.Charge); ok {
 			printFound(w, m, ch)
 		}

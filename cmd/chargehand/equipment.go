@@ -454,6 +454,8 @@ func unitOf(body any) (record.UnitRef, bool) {
 		return b.Unit, true
 	case record.Charge:
 		return b.Unit, true
+	case record.Snag:
+		return b.Unit, true
 	}
 	return record.UnitRef{}, false
 }
@@ -536,6 +538,15 @@ func otherwise(body any) string {
 			what = "sheet " + b.Sheet.Short()
 		}
 		return fmt.Sprintf("recalls %s since %s: %s", what, clock(b.Since), b.Reason)
+	case record.Snag:
+		return "snag: " + b.What
+	case record.SnagCleared:
+		return fmt.Sprintf("clears snag %s: %s", b.Of.Short(), b.How)
+	case record.Handover:
+		if b.Takes != (record.ID{}) {
+			return fmt.Sprintf("takes over what entry %s gave, %d matters open", b.Takes.Short(), len(b.Open))
+		}
+		return fmt.Sprintf("hands over, %d matters open", len(b.Open))
 	case record.Unknown:
 		return "written by a newer chargehand"
 	}

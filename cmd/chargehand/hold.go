@@ -3,7 +3,6 @@ package main
 import (
 	"errors"
 	"fmt"
-	"io"
 	"time"
 
 	"github.com/spf13/cobra"
@@ -72,10 +71,7 @@ func newHold() *cobra.Command {
 			if err != nil {
 				return holdRefused(err, in)
 			}
-			w := cmd.OutOrStdout()
-			if asJSON {
-				w = io.Discard
-			}
+			w := quietWith(cmd, asJSON)
 			j := holdJSON{Unit: unitName(u.Ref), Start: first.Entry.String(), End: last.Entry.String(), Hours: round2(took.Hours()), Verdict: r.Class.String(), DropPsi: inPsi(r.Drop), AllowedPsi: inPsi(r.Allowed),
 				UncertaintyPsi: inPsi(r.U), PsiPerDay: round2(r.Rate.PsiPerDay()), Exceeds: round2(r.Exceeds)}
 			for _, t := range r.Budget {

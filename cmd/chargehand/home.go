@@ -146,6 +146,11 @@ func (h *home) sign(cmd *cobra.Command, w io.Writer, b *ledger.Book, dir string,
 	if err != nil {
 		return record.Verified{}, err
 	}
+	return h.signWith(cmd, w, b, dir, key, d)
+}
+
+// signWith signs a draft with a key that is unlocked already.
+func (h *home) signWith(cmd *cobra.Command, w io.Writer, b *ledger.Book, dir string, key ed25519.PrivateKey, d ledger.Draft) (record.Verified, error) {
 	if err := tellRefreshed(w, b, dir); err != nil { // what moved before this entry is not this entry's doing
 		return record.Verified{}, err
 	}
@@ -165,6 +170,14 @@ func tellRefreshed(w io.Writer, b *ledger.Book, dir string) error {
 	}
 	tellMoved(w, b.Meaning(), r.Moved)
 	return nil
+}
+
+// quietWith is where a command tells what it does: nowhere when it prints JSON.
+func quietWith(cmd *cobra.Command, asJSON bool) io.Writer {
+	if asJSON {
+		return io.Discard
+	}
+	return cmd.OutOrStdout()
 }
 
 // with opens the book, gives bare numbers its units, and closes it after f.

@@ -77,10 +77,10 @@ func newRoot() *cobra.Command {
 		title    string
 		commands []*cobra.Command
 	}{
-		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newSettle(), newHold(), newTrace(), newBoard()}},
+		{"At the aircraft", []*cobra.Command{newCheck(), newCharge(), newSettle(), newHold(), newTrace(), newSnag(), newBoard()}},
 		{"What the numbers say", []*cobra.Command{newPlan(), newNight(), newCapacity(), newTrend(), newFaults()}},
 		{"What was signed", []*cobra.Command{newCountersign(), newCorrect(), newWithdraw(), newRecall(), newRecord(), newExport(), newAudit()}},
-		{"The book and its laptops", []*cobra.Command{newBook(), newHand(), newMeet()}},
+		{"The book and its laptops", []*cobra.Command{newBook(), newHand(), newMeet(), newHandover()}},
 		{"Equipment", []*cobra.Command{newUnit(), newGauge(), newSheet(), newBottle()}},
 		{"Without a book", []*cobra.Command{newConvert(), newProve(), newRehearse(), newVersion()}},
 	} {

@@ -90,10 +90,7 @@ func recalling(cmd *cobra.Command, body func(*ledger.Meaning, string) (record.Re
 			if err != nil {
 				return err
 			}
-			w := cmd.OutOrStdout()
-			if asJSON {
-				w = io.Discard
-			}
+			w := quietWith(cmd, asJSON)
 			j := recallFacts(m, m.WithRecall(r), r)
 			j.print(w)
 			if !look {

@@ -105,10 +105,7 @@ func newSettle() *cobra.Command {
 					return err
 				}
 			}
-			w := cmd.OutOrStdout()
-			if asJSON {
-				w = io.Discard
-			}
+			w := quietWith(cmd, asJSON)
 			printSettle(w, u, body, fit, r, d, in)
 			facts := settleFacts(u, body, fit, r, d)
 			if fresh && !unsigned {

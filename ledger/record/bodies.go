@@ -27,6 +27,9 @@ const (
 	KindHold           Kind = "hold"
 	KindTrace          Kind = "trace"
 	KindRecall         Kind = "recall"
+	KindSnag           Kind = "snag"
+	KindSnagCleared    Kind = "snag-cleared"
+	KindHandover       Kind = "handover"
 )
 
 // Role is what a hand may do.
@@ -316,6 +319,29 @@ type Recall struct {
 	Since      Time    `cbor:"3,keyasint"`
 	Correction *Amount `cbor:"4,keyasint,omitempty"`
 	Reason     string  `cbor:"5,keyasint"`
+}
+
+// Snag is a defect raised on a unit, until it is cleared.
+type Snag struct {
+	Unit  UnitRef `cbor:"1,keyasint"`
+	What  string  `cbor:"2,keyasint"`
+	Found Time    `cbor:"3,keyasint"`
+}
+
+// SnagCleared says how a snag was put right.
+type SnagCleared struct {
+	Of   ID     `cbor:"1,keyasint"`
+	How  string `cbor:"2,keyasint"`
+	Done Time   `cbor:"3,keyasint"`
+}
+
+// Handover passes the work on: the one who gives states the book's fingerprint and what is open; the one who takes names that
+// entry, and states the fingerprint that they hold.
+type Handover struct {
+	Fingerprint [32]byte `cbor:"1,keyasint"` // of the book before this entry
+	Open        []string `cbor:"2,keyasint,omitempty"`
+	Takes       ID       `cbor:"3,keyasint,omitzero"`
+	Note        string   `cbor:"4,keyasint,omitempty"`
 }
 
 // Unknown is the body of a kind that this version does not know: verified, kept and forwarded unread.

@@ -102,6 +102,9 @@ var newBody = map[Kind]func() any{
 	KindHold:           func() any { return new(Hold) },
 	KindTrace:          func() any { return new(Trace) },
 	KindRecall:         func() any { return new(Recall) },
+	KindSnag:           func() any { return new(Snag) },
+	KindSnagCleared:    func() any { return new(SnagCleared) },
+	KindHandover:       func() any { return new(Handover) },
 }
 
 func malformed(format string, args ...any) error {
@@ -171,8 +174,11 @@ const maxSoak = 100_000
 // maxNoticed is how much can be noticed beside one reading.
 const maxNoticed = 20
 
+// maxOpen is how many open matters a handover can state.
+const maxOpen = 100
+
 // optionalID are the ids that may be absent.
-var optionalID = []string{"LastID", "Sheet"}
+var optionalID = []string{"LastID", "Sheet", "Takes"}
 
 // optionalText are the text fields that may be empty; all others must say something.
 var optionalText = []string{"Certificate", "Note", "Override", "Construction", "Valve", "Torque", "Label"}
@@ -278,8 +284,8 @@ func checkFields(v reflect.Value) error {
 			_, recall := v.Interface().(Recall) // names one of two
 			err = checkText(name, x, !slices.Contains(optionalText, name) && !recall || name == "Reason")
 		case []string:
-			if len(x) > maxNoticed {
-				err = malformed("%d things seen; at most %d", len(x), maxNoticed)
+			if most := map[string]int{"Seen": maxNoticed, "Open": maxOpen}[name]; len(x) > most {
+				err = malformed("%s holds %d things; at most %d", name, len(x), most)
 			}
 			for _, words := range x {
 				err = errors.Join(err, checkText(name, words, true))

@@ -158,6 +158,9 @@ func bodies(t testing.TB) map[Kind]any {
 		KindHold:           Hold{Start: ID{7}, End: ID{8}, Limit: am(20, "psi"), Document: "CM-29"},
 		KindTrace:          Trace{Unit: unit, Gauge: "G-9", Drawn: Series{Unit: "strokes", Values: []int64{0, 1, 2}}, Pressures: Series{Unit: "psi", Values: []int64{3000, 2000, 0}}, Temperature: am(41, "F"), From: "shell", Done: when},
 		KindRecall:         Recall{Gauge: "G-7", Since: when, Reason: "15 psi high at calibration"},
+		KindSnag:           Snag{Unit: unit, What: "gauge glass cracked", Found: when},
+		KindSnagCleared:    SnagCleared{Of: ID{7}, How: "glass replaced", Done: when},
+		KindHandover:       Handover{Fingerprint: [32]byte{9}, Open: []string{"HA-40/104 settling"}, Takes: ID{7}},
 	}
 }
 
@@ -527,6 +530,9 @@ func TestBadBodiesAreRefused(t *testing.T) {
 		"a float in correction": {KindCorrection, Correction{Of: ID{1}, Kind: "hologram", Body: []byte{0xa1, 1, 0xf9, 0x3c, 0}, Reason: "x"}},
 		"sees nothing":          {KindReading, mangle(func(r *Reading) { r.Seen = []string{""} })},
 		"sees too much":         {KindReading, mangle(func(r *Reading) { r.Seen = slices.Repeat([]string{"oil"}, maxNoticed+1) })},
+		"clears nothing":        {KindSnagCleared, SnagCleared{How: "x", Done: when}},
+		"a snag of nothing":     {KindSnag, Snag{Unit: unit, Found: when}},
+		"open without end":      {KindHandover, Handover{Open: slices.Repeat([]string{"x"}, maxOpen+1)}},
 		"one value":             {KindTrace, func() any { b := good[KindTrace].(Trace); b.Drawn.Values = b.Drawn.Values[:1]; return b }()},
 		"falling seconds":       {KindSettling, func() any { b := good[KindSettling].(Settling); b.Seconds.Values = []int64{90, 30}; return b }()},
 		"unlike lengths":        {KindSettling, func() any { b := good[KindSettling].(Settling); b.Seconds.Values = []int64{1, 2, 3}; return b }()},
