@@ -124,11 +124,27 @@ func official(m *ledger.Meaning, it *ledger.Item) (officialJSON, error) {
 		}
 		j.Second = append(j.Second, fmt.Sprintf("%s by %s%s, %s, entry %s", c.Entry().Body.(record.Countersign).Meaning, name, certified(certificate), clock(c.Entry().Signed), id.Short()))
 	}
+	if known := m.Item(workedBy(it.Body)); known != nil && judged.Sheet != nil && known.ID() != judged.Sheet.ID {
+		if s, ok := known.Body.(record.Sheet); ok {
+			j.Remarks = append(j.Remarks, fmt.Sprintf("its signer worked by %s rev %s; the sheet named above was in force by what the book holds now", s.Document, s.Revision))
+		}
+	}
 	for _, id := range it.CorrectedBy {
 		j.Remarks = append(j.Remarks, amendment(m, "corrected since it was signed", id))
 	}
 	j.Remarks = append(j.Remarks, it.Flags...)
 	return j, nil
+}
+
+// workedBy returns the sheet that was in force as far as the signer knew.
+func workedBy(body any) record.ID {
+	switch b := body.(type) {
+	case record.Reading:
+		return b.Sheet
+	case record.Charge:
+		return b.Sheet
+	}
+	return record.ID{}
 }
 
 func capital(s string) string {

@@ -24,6 +24,10 @@ func TestOfficialRecord(t *testing.T) {
 			t.Errorf("no %q in\n%s", want, out)
 		}
 	}
+	b.sign(words("sheet add --part HA-40 --charge 1255psi --minus 100psi --plus 100psi --at 70F --document CM-29 --revision B --effective 2020-01-02")...)
+	if out := b.want(statusOK, "record", v.Entry[:8]); !strings.Contains(out, "its signer worked by CM-29 rev A") {
+		t.Error(out)
+	}
 	if out := b.want(statusUsage, "record", "ffff"); !strings.Contains(out, `"ffff" names 0 entries`) {
 		t.Error(out)
 	}
