@@ -109,7 +109,7 @@ func newMeet() *cobra.Command {
 		if to != "" {
 			who, rw, err := host.Dial(ctx, to)
 			if err != nil {
-				return couldNot(fmt.Errorf("--to %q: %w", to, err), "See that 'chargehand meet' runs on the other laptop, that it is a laptop of this book whose key is not retired, and that the address is the one it shows")
+				return couldNot(unmet(to, err), "See that 'chargehand meet' runs on the other laptop, that it is a laptop of this book whose key is not retired and who knows of yours, and that the address is the one it shows")
 			}
 			t.talk(ctx, who, rw)
 			return <-t.met
@@ -136,6 +136,25 @@ func newMeet() *cobra.Command {
 	}
 	return cmd
 }
+
+// unmet says why nobody was met at an address, without the words of the network's library.
+func unmet(to string, err error) error {
+	for _, known := range []error{lan.ErrNotAllowed, lan.ErrNoAnswer} {
+		if errors.Is(err, known) {
+			return &problemCause{fmt.Sprintf("--to %q: %v", to, known), err}
+		}
+	}
+	return fmt.Errorf("--to %q: %w", to, err)
+}
+
+// problemCause tells a cause in other words.
+type problemCause struct {
+	words string
+	cause error
+}
+
+func (p *problemCause) Error() string { return p.words }
+func (p *problemCause) Unwrap() error { return p.cause }
 
 // table is where laptops meet: one conversation at a time, so that what moved is told for each.
 type table struct {
