@@ -173,7 +173,7 @@ const (
 
 // channel is one conversation after both hellos: what both sides must have seen alike, and the keys that follow from it and the code.
 type channel struct {
-	transcript     [32]byte
+	opening        [32]byte
 	proofKey, seal []byte
 }
 
@@ -189,8 +189,8 @@ func newChannel(secret [32]byte, fresh *ecdh.PrivateKey, theirs [32]byte, bindin
 		return nil, fmt.Errorf("%w: %w", ErrGarbage, err)
 	}
 	bound := append([]byte{}, binding...) // nil would be encoded unlike empty
-	c := &channel{transcript: sha256.Sum256(marshal([]any{"chargehand join 1", bound, newcomer, lead}))}
-	root, err := hkdf.Extract(sha256.New, append(secret[:], shared...), c.transcript[:])
+	c := &channel{opening: sha256.Sum256(marshal([]any{"chargehand join 1", bound, newcomer, lead}))}
+	root, err := hkdf.Extract(sha256.New, append(secret[:], shared...), c.opening[:])
 	if err != nil {
 		return nil, err
 	}
@@ -201,10 +201,10 @@ func newChannel(secret [32]byte, fresh *ecdh.PrivateKey, theirs [32]byte, bindin
 	return c, err
 }
 
-// proof is HMAC over the role and, by the transcript, over both keys, both fresh keys and the binding.
+// proof is HMAC over the role and, by the opening, over both keys, both fresh keys and the binding.
 func (c *channel) proof(of role) [32]byte {
 	mac := hmac.New(sha256.New, c.proofKey)
-	mac.Write(marshal([]any{of, c.transcript}))
+	mac.Write(marshal([]any{of, c.opening}))
 	return [32]byte(mac.Sum(nil))
 }
 
@@ -222,11 +222,11 @@ const (
 )
 
 func (c *channel) close(message byte, plain []byte) []byte {
-	return must(chacha20poly1305.New(c.seal)).Seal(nil, nonce(message), plain, c.transcript[:])
+	return must(chacha20poly1305.New(c.seal)).Seal(nil, nonce(message), plain, c.opening[:])
 }
 
 func (c *channel) open(message byte, data []byte) ([]byte, error) {
-	plain, err := must(chacha20poly1305.New(c.seal)).Open(nil, nonce(message), data, c.transcript[:])
+	plain, err := must(chacha20poly1305.New(c.seal)).Open(nil, nonce(message), data, c.opening[:])
 	if err != nil {
 		return nil, fmt.Errorf("%w: a sealed message was altered", ErrGarbage)
 	}
@@ -242,7 +242,7 @@ func nonce(message byte) []byte {
 // possession is what a laptop signs to show that it holds its key. No entry can look like it: an entry's signed bytes are an array that
 // begins with "Signature1" (RFC 9052 section 4.4).
 func (c *channel) possession(of role, name, certificate string) []byte {
-	return marshal([]any{"chargehand join 1 possession", of, c.transcript, name, certificate})
+	return marshal([]any{"chargehand join 1 possession", of, c.opening, name, certificate})
 }
 
 // greet makes this side's hello and the private part of its fresh key.
