@@ -199,12 +199,13 @@ func fallsSinceFirstCheck(e *evidence) (string, bool) {
 
 const settled = time.Hour // after which shell and gas are taken as cooled (common practice, no source)
 
+// leftWarm is nothing to go by unless the pressure was lower after: most charges are read soon, and stay. A soak of zero was not noted.
 func leftWarm(e *evidence) (string, bool) {
 	left, _, ok := charged(e)
-	if !ok || left.Reading.Soak >= settled/2 {
+	if _, fell := fellAtOnce(e); !ok || !fell || left.Reading.Soak <= 0 || left.Reading.Soak >= settled/2 {
 		return "", false
 	}
-	return fmt.Sprintf("the charge was read %.0f min after it stopped, with gas or shell still warm", max(0, left.Reading.Soak.Minutes())), true
+	return fmt.Sprintf("the charge was read %.0f min after it stopped, with gas or shell still warm", left.Reading.Soak.Minutes()), true
 }
 
 func leftSettled(e *evidence) (string, bool) {

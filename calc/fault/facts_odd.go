@@ -165,9 +165,10 @@ func tooMuchForAmbient(e *evidence) (string, bool) {
 
 // The gauge, and the other units read with it.
 
-// gaugeStep compares the readings with the present gauge with those before it in the same stretch.
+// gaugeStep compares the readings with the present gauge with those before it in the same stretch. A gauge that read other units
+// in line at that time made no step.
 func gaugeStep(e *evidence) (string, bool) {
-	if len(e.now) == 0 {
+	if _, sound := sameGaugeInLine(e); sound || len(e.now) == 0 {
 		return "", false
 	}
 	g := last(e.now).Gauge

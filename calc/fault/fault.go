@@ -30,7 +30,7 @@ type Observation struct {
 	When    time.Time
 	Kind    Kind
 	Gauge   string       // asset number
-	Reading calc.Reading // as entered; on a ChargeLeft, Soak is the time since the charging stopped
+	Reading calc.Reading // as entered; on a ChargeLeft, Soak is the time since the charging stopped, zero: not noted
 	// Corrected is the gauge pressure at the sheet's reference temperature and ambient pressure, as calc.Judge gives it for a
 	// sheet without a chart; zero: it is found here from the reading, without the gauge's certificate.
 	Corrected                 quantity.GaugePressure

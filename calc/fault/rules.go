@@ -94,7 +94,7 @@ var rules = []rule{
 		{swapped, 4.5}, {fitsAnother, 2.5}, {laterBack, 0.7}, {inLine, -3},
 	}},
 	{FluidNotRelieved, 0, []clue{
-		{fluidSeen, 3}, {reliefNotSaid, 1}, {atSystem, 3}, {rises, 1}, {said(NoSuddenDrop), 0.7}, {reliefSeen, -1},
+		{fluidSeen, 3}, {reliefNotSaid, 1}, {atSystem, 3}, {rises, 2}, {said(NoSuddenDrop), 0.7}, {reliefSeen, -1},
 		{said(SuddenDrop), -1}, {said(OilAtGasValve), -1.5}, {sameGaugeOff, -1.5},
 	}},
 	{AmbientShift, -0.5, []clue{
