@@ -38,11 +38,15 @@ func over(a, b seen) string {
 func first(ss []seen) seen { return ss[0] }
 func last(ss []seen) seen  { return ss[len(ss)-1] }
 
-// said holds when a remark was ticked since the last charge; the latest time counts.
+// said holds when a remark was ticked since the last charge or, unless the charge cures it, at that charge; the latest time counts.
 func said(r Remark) fact {
 	return func(e *evidence) (string, bool) {
+		if slices.Contains(e.h.Noticed, r) {
+			return fmt.Sprintf("%s, noticed now", r), true
+		}
 		for _, s := range slices.Backward(e.all) {
-			if s.stretch < e.last.stretch && s.stretch < e.q.stretch {
+			atCharge := s.Kind == ChargeFound && s.stretch == e.last.stretch-1 && !r.cured()
+			if s.stretch < e.last.stretch && s.stretch < e.q.stretch && !atCharge {
 				break
 			}
 			if slices.Contains(s.Remarks, r) {

@@ -53,6 +53,7 @@ type History struct {
 	// Allowed is the allowed loss of corrected pressure a day, pascals; 0: not known.
 	Allowed quantity.GaugePressure
 	Seen    []Observation
+	Noticed []Remark // now, beside no reading
 	Others  []Other
 }
 

@@ -211,6 +211,33 @@ func TestSoundUnit(t *testing.T) {
 	}
 }
 
+// What is noticed now says something with nothing read, and is never given the date of a reading.
+func TestNoticedNow(t *testing.T) {
+	for name, h := range map[string]History{"nothing read": {}, "in line": history(obs(t, 0, 1250, 70), obs(t, 5, 1251, 69), obs(t, 9, 1249, 71))} {
+		h.Noticed = []Remark{OilAtGasValve}
+		if fs := Explain(h); len(fs) == 0 || fs[0].Cause != FluidOnGasSide || fs[0].For[0] != "oil at the gas valve, noticed now" {
+			t.Errorf("%s: %+v", name, fs)
+		}
+	}
+}
+
+// Bubbles seen while it was charged are still a leak afterwards; hammering for want of gas is over.
+func TestRemarksAtACharge(t *testing.T) {
+	found := func(r Remark) Observation {
+		return obs(t, 10, 1180, 70, with(r), func(o *Observation) { o.Kind = ChargeFound })
+	}
+	for r, want := range map[Remark]bool{BubblesAtValve: true, OilAtGasValve: true, Hammering: false, FewStrokes: false} {
+		fs := Explain(history(obs(t, 0, 1250, 70), found(r), obs(t, 10, 1250, 70, left(2*time.Hour)), obs(t, 15, 1251, 70)))
+		if told := strings.Contains(fmt.Sprintf("%v", fs), r.String()); told != want {
+			t.Errorf("%s: told %v\n%v", r, told, fs)
+		}
+	}
+	again := history(found(BubblesAtValve), obs(t, 10, 1250, 70, left(2*time.Hour)), obs(t, 11, 1250, 70, func(o *Observation) { o.Kind = ChargeFound }), obs(t, 11, 1260, 70, left(2*time.Hour)))
+	if fs := Explain(again); len(fs) > 0 {
+		t.Errorf("noted two charges ago: %v", fs)
+	}
+}
+
 // The evidence carries the numbers of the history, in the sheet's units.
 func TestSentencesCarryNumbers(t *testing.T) {
 	h := history(obs(t, 0, 1250, 70, left(3*time.Hour)), obs(t, 10, 1200, 60), obs(t, 20, 1150, 68, with(BubblesAtValve)))
@@ -304,6 +331,7 @@ func TestAnyHistory(t *testing.T) {
 			h.Limits = calc.Limits{}
 		}
 		h.Seen = rapid.SliceOfN(rapid.Custom(anyObservation), 0, 8).Draw(rt, "seen")
+		h.Noticed = rapid.SliceOfN(rapid.SampledFrom(append(Remarks(), Remark(-1), remarkCount)), 0, 3).Draw(rt, "noticed")
 		for _, unit := range rapid.SliceOfNDistinct(rapid.SampledFrom([]string{"B", "C", "D"}), 0, 3, rapid.ID[string]).Draw(rt, "others") {
 			h.Others = append(h.Others, Other{unit, sheet(1400), rapid.SliceOfN(rapid.Custom(anyObservation), 0, 5).Draw(rt, unit)})
 		}

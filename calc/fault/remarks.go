@@ -57,6 +57,15 @@ func (r Remark) String() string {
 	return remarkWords[r]
 }
 
+// cured tells whether it is a sign of too little gas, which is over when gas was put in.
+func (r Remark) cured() bool {
+	switch r {
+	case PumpCyclesFast, Hammering, ZeroWhenPumpStops, FewStrokes:
+		return true
+	}
+	return false
+}
+
 // Remarks returns all remarks, in the order in which a form would list them.
 func Remarks() []Remark {
 	out := make([]Remark, remarkCount)

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"slices"
 	"strings"
+	"time"
 
 	"github.com/spf13/cobra"
 
@@ -16,9 +17,21 @@ import (
 )
 
 type faultsJSON struct {
-	Unit     string      `json:"unit"`
-	Readings int         `json:"readings"`
-	Causes   []faultJSON `json:"causes"` // the likeliest first; none: nothing points to a fault
+	Unit     string       `json:"unit"`
+	Readings int          `json:"readings"`        // that could be used; a charge counts as two
+	First    string       `json:"first,omitempty"` // when the first of them was made
+	Last     string       `json:"last,omitempty"`
+	Gauges   []string     `json:"gauges"`
+	Allowed  string       `json:"allowed"` // loss that the sheet allows a day, or why that is not known
+	Noticed  []string     `json:"noticed"` // now, with --seen
+	Passed   []unusedJSON `json:"passed_over"`
+	Causes   []faultJSON  `json:"causes"` // the likeliest first; none: nothing points to a fault
+}
+
+// unusedJSON is an entry that says nothing of the charge, and why.
+type unusedJSON struct {
+	Entry string `json:"entry"`
+	Why   string `json:"why"`
 }
 
 type faultJSON struct {
@@ -55,24 +68,27 @@ func newFaults() *cobra.Command {
 			if err != nil {
 				return err
 			}
-			history, passed := faultHistory(m, u, now.is)
-			found := fault.Explain(history)
-			j := faultsJSON{Unit: unitName(u.Ref), Readings: len(history.Seen), Causes: []faultJSON{}}
-			for _, f := range found {
-				if f.Strength > fault.Weak || all {
-					j.Causes = append(j.Causes, faultJSON{f.Cause.String(), f.Cause.Fault(), f.Strength.String(), f.For, f.Against, f.Next})
-				}
-			}
+			j := faultFacts(m, u, now.is, all)
 			if asJSON {
 				return writeJSON(cmd.OutOrStdout(), j)
 			}
 			w := cmd.OutOrStdout()
-			fmt.Fprintf(w, "unit        %s%s\nreadings    %d\n", j.Unit, fitted(u), j.Readings)
-			for _, p := range passed {
-				fmt.Fprintf(w, "passed over entry %s: %s\n", p.Entry.Short(), p.Why)
+			fmt.Fprintf(w, "unit        %s%s\n", j.Unit, fitted(u))
+			if j.Readings > 0 {
+				fmt.Fprintf(w, "readings    %d, %s to %s, with %s\n", j.Readings, j.First, j.Last, strings.Join(j.Gauges, ", "))
+			} else {
+				fmt.Fprintln(w, "readings    none that can be used")
+			}
+			fmt.Fprintf(w, "allowed     %s\n", j.Allowed)
+			for _, p := range j.Passed {
+				fmt.Fprintf(w, "passed over entry %.8s: %s\n", p.Entry, p.Why)
 			}
 			if !slices.ContainsFunc(j.Causes, func(c faultJSON) bool { return c.Fault }) {
-				fmt.Fprintln(w, "found       nothing in these readings points to a fault")
+				found := "nothing in these readings points to a fault"
+				if j.Readings == 0 {
+					found = "nothing to reason from; check it, or say with --seen what you notice"
+				}
+				fmt.Fprintf(w, "found       %s\n", found)
 			}
 			for i, c := range j.Causes {
 				note := ""
@@ -95,9 +111,41 @@ func newFaults() *cobra.Command {
 	return cmd
 }
 
+// faultFacts reasons about a unit; all: also those for which little speaks.
+func faultFacts(m *ledger.Meaning, u *ledger.Unit, noticed []string, all bool) faultsJSON {
+	watched := verdict.Watch(m, u)
+	h := faultHistory(m, u, &watched)
+	h.Noticed = parsedRemarks(noticed)
+	j := faultsJSON{Unit: unitName(u.Ref), Readings: len(h.Seen), Gauges: []string{}, Noticed: append([]string{}, noticed...), Passed: []unusedJSON{}, Causes: []faultJSON{}}
+	if n := len(h.Seen); n > 0 {
+		j.First, j.Last = h.Seen[0].When.Format(time.DateOnly), h.Seen[n-1].When.Format(time.DateOnly)
+	}
+	for _, s := range h.Seen {
+		if !slices.Contains(j.Gauges, s.Gauge) {
+			j.Gauges = append(j.Gauges, s.Gauge)
+		}
+	}
+	switch {
+	case watched.NoAllow != "":
+		j.Allowed = "loss not known: " + watched.NoAllow
+	case h.Allowed > 0:
+		j.Allowed = fmt.Sprintf("a loss of %s a day, by sheet %s rev %s", h.Limits.In.Pressure(h.Allowed), watched.Sheet.Document, watched.Sheet.Revision)
+	default:
+		j.Allowed = "loss not known: no sheet states it"
+	}
+	for _, p := range watched.Passed {
+		j.Passed = append(j.Passed, unusedJSON{p.Entry.String(), p.Why})
+	}
+	for _, f := range fault.Explain(h) {
+		if f.Strength > fault.Weak || all {
+			j.Causes = append(j.Causes, faultJSON{f.Cause.String(), f.Cause.Fault(), f.Strength.String(), f.For, append([]string{}, f.Against...), f.Next})
+		}
+	}
+	return j
+}
+
 // faultHistory gathers what is known of a unit, with the others beside it.
-func faultHistory(m *ledger.Meaning, u *ledger.Unit, now []string) (fault.History, []verdict.Passed) {
-	w := verdict.Watch(m, u)
+func faultHistory(m *ledger.Meaning, u *ledger.Unit, w *verdict.Watched) fault.History {
 	h := fault.History{Unit: unitName(u.Ref), Limits: w.Limits, Allowed: quantity.GaugePressure(w.Allowed.PerDay())}
 	if len(w.Seen) == 0 {
 		if s := m.SheetAt(u.Ref.Part, (&stamp{}).record()); s != nil {
@@ -105,9 +153,6 @@ func faultHistory(m *ledger.Meaning, u *ledger.Unit, now []string) (fault.Histor
 		}
 	}
 	h.Seen = faultObservations(m, w.Seen)
-	if n := len(h.Seen); n > 0 {
-		h.Seen[n-1].Remarks = append(h.Seen[n-1].Remarks, parsedRemarks(now)...)
-	}
 	for _, o := range m.Units {
 		if o.Ref == u.Ref {
 			continue
@@ -116,7 +161,7 @@ func faultHistory(m *ledger.Meaning, u *ledger.Unit, now []string) (fault.Histor
 			h.Others = append(h.Others, fault.Other{Unit: unitName(o.Ref), Limits: seen[len(seen)-1].Limits, Seen: faultObservations(m, seen)})
 		}
 	}
-	return h, w.Passed
+	return h
 }
 
 // parsedRemarks leaves out words that this version does not know.

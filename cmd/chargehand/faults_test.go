@@ -158,3 +158,75 @@ func TestFaultsOfSoundUnits(t *testing.T) {
 		}
 	}
 }
+
+// What it rests on is said: the readings, the allowed loss in each way that a sheet can state it, and what was passed over.
+func TestFaultsSayWhatTheyRestOn(t *testing.T) {
+	b := newBench(t)
+	b.equip()
+	var j faultsJSON
+	b.json(&j, "faults", "104")
+	if j.Readings != 0 || len(j.Causes) != 0 || !strings.Contains(b.want(statusOK, "faults", "104"), "nothing to reason from") {
+		t.Errorf("nothing read: %+v", j)
+	}
+	b.json(&j, "faults", "104", "--seen", "Oil at the gas valve", "--seen", "foam in the reservoir")
+	if len(j.Noticed) != 2 || len(j.Causes) == 0 || j.Causes[0].Cause != fault.FluidOnGasSide.String() || j.Causes[0].For[0] != "oil at the gas valve, noticed now" {
+		t.Errorf("noticed with nothing read: %+v", j)
+	}
+	b.read("2031-01-01", "M-1", 1250, 40)
+	b.read("2031-01-08", "M-2", 1250, 60)
+	b.json(&j, "faults", "104")
+	// MIL-DTL-5498G allows 5 mL/h of free gas from 50 in3: 2.2 psi a day, by the domain's notes at 1,000 psig.
+	if j.Readings != 2 || j.First != "2031-01-01" || j.Last != "2031-01-08" || strings.Join(j.Gauges, " ") != "M-1 M-2" || j.Allowed != "a loss of 2.2 psi a day, by sheet CM-29 rev A" {
+		t.Errorf("%+v", j)
+	}
+	for revision, want := range map[string]string{
+		"B --leak 3psi/day":   "a loss of 3 psi a day, by sheet CM-29 rev B",
+		"C --leak 5mL/h":      "loss not known: the sheet allows 5 mL/h of free gas but gives no gas volume to turn it into pressure",
+		"D --gas-volume 1in3": "loss not known: no sheet states it",
+	} {
+		b.sign(words("sheet add --part HA-40 --charge 1250psi --minus 100psi --plus 100psi --at 70F --document CM-29 --effective 2020-01-02 --revision " + revision)...)
+		if b.json(&j, "faults", "104"); j.Allowed != want {
+			t.Errorf("%s: %s", revision, j.Allowed)
+		}
+	}
+	b.sign(words("recall gauge M-2 --since 2031-01-05 --reason dropped")...)
+	if b.json(&j, "faults", "104"); j.Readings != 1 || len(j.Passed) != 1 || !strings.Contains(j.Passed[0].Why, "gauge M-2 was recalled: dropped") {
+		t.Errorf("%+v", j)
+	}
+	for _, args := range [][]string{{"faults", "999"}, {"faults"}, {"faults", "104", "105"}} {
+		b.want(statusUsage, args...)
+	}
+	t.Setenv("CHARGEHAND_BOOK", "nowhere")
+	b.want(statusNot, "faults", "104")
+}
+
+// What was noticed beside a charge is signed with it, and put right or taken back by a correction that leaves the rest.
+func TestWhatWasNoticedIsCorrected(t *testing.T) {
+	b := newBench(t)
+	b.equip()
+	b.want2(words("charge 104 --gauge M-1 --found 1100psi --found-temperature 70F --found-from shell --left 1250psi --left-temperature 70F --left-from shell --bottle none --relieved pedal --fluid 0psi " +
+		"--done 2031-01-01T08:00Z --unlikely-because x --seen bubbles_at_the_valve --seen spongy_controls --passphrase-file pp")...)
+	var show struct{ History []eventJSON }
+	b.json(&show, "unit", "show", "104")
+	charge := show.History[len(show.History)-1].Entry
+	for _, x := range []struct{ sets, noticed string }{
+		{"--set note=x", "noticed: bubbles at the valve, spongy controls; x"},
+		{"--set seen=oil_at_the_gas_valve --set seen=hammering_in_the_system", "noticed: oil at the gas valve, hammering in the system; x"},
+		{"--set seen=", "0 psi seen; x"},
+		{"--set seen=Spongy_controls", "noticed: spongy controls; x"},
+	} {
+		out := b.sign(words("correct " + charge + " --reason slip " + x.sets)...)
+		if _, becomes, _ := strings.Cut(out, "becomes"); !strings.HasSuffix(strings.SplitN(becomes, "\n", 2)[0], x.noticed) {
+			t.Errorf("%s: %s", x.sets, out)
+		}
+	}
+	if out := b.want(statusUsage, "correct", charge, "--reason", "slip", "--set", "seen=a ghost"); !strings.Contains(out, `"a ghost" is none of what can be noted`) {
+		t.Error(out)
+	}
+	var j faultsJSON
+	b.json(&j, "faults", "104", "--all")
+	if text := fmt.Sprint(j.Causes); !strings.Contains(text, "spongy controls, noted 2031-01-01 08:00") || strings.Contains(text, "bubbles") {
+		t.Errorf("by what counts now: %s", text)
+	}
+	b.want(statusUsage, words("check 104 --seen= --passphrase-file pp")...) // nothing to take back
+}

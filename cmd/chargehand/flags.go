@@ -227,13 +227,23 @@ func (m *minutes) Set(s string) error {
 	return nil
 }
 
-// remarks is a flag for what was noticed, in the words of calc/fault; it may be given again.
-type remarks struct{ is []string }
+// remarks is a flag for what was noticed, in the words of calc/fault; it may be given again. What an entry held gives way to the
+// first that is given; none at all takes it back.
+type remarks struct {
+	is     []string
+	loaded bool
+}
+
+func (r *remarks) load(seen []string) { r.is, r.loaded = slices.Clone(seen), true }
 
 func (r *remarks) String() string { return strings.Join(r.is, "; ") }
 func (r *remarks) Type() string   { return "words" }
 
 func (r *remarks) Set(s string) error {
+	if s == "" && r.loaded {
+		r.is = nil
+		return nil
+	}
 	what, err := fault.ParseRemark(s)
 	if err != nil {
 		var all []string
@@ -241,6 +251,9 @@ func (r *remarks) Set(s string) error {
 			all = append(all, x.String())
 		}
 		return &valueError{fmt.Sprintf("%q is none of what can be noted", s), "Write one of: " + strings.Join(all, "; "), nil}
+	}
+	if r.loaded {
+		r.is, r.loaded = nil, false
 	}
 	if !slices.Contains(r.is, what.String()) {
 		r.is = append(r.is, what.String())

@@ -143,7 +143,8 @@ func (r *readingForm) wants(m *ledger.Meaning) []want {
 
 func (r *readingForm) load(body any) error {
 	b := body.(record.Reading)
-	r.soak.n, r.seen.is = b.SoakMin, b.Seen
+	r.soak.n = b.SoakMin
+	r.seen.load(b.Seen)
 	for _, err := range []error{r.pressure.load(&b.Pressure), r.temperature.load(&b.Temperature), r.from.Set(b.TemperatureFrom)} {
 		if err != nil {
 			return err
@@ -223,7 +224,8 @@ func (c *chargeForm) wants(m *ledger.Meaning) []want {
 
 func (c *chargeForm) load(body any) error {
 	b := body.(record.Charge)
-	c.bottle, c.gas, c.seen.is = b.Bottle, b.Gas, b.Seen
+	c.bottle, c.gas = b.Bottle, b.Gas
+	c.seen.load(b.Seen)
 	for _, err := range []error{c.found.load(b.AsFound), c.left.load(b.AsLeft)} {
 		if err != nil {
 			return err
