@@ -14,8 +14,8 @@ type Recall struct {
 	Until int64
 }
 
-// covers tells whether work done at a time is touched.
-func (r *Recall) covers(at record.Time) bool {
+// Covers tells whether work done at a time is touched.
+func (r *Recall) Covers(at record.Time) bool {
 	return r.Since.Unix <= at.Unix && (r.Until == 0 || at.Unix < r.Until)
 }
 
@@ -48,7 +48,7 @@ func (m *Meaning) recalls() {
 // display order counts.
 func (m *Meaning) GaugeRecall(asset string, at record.Time) (in *Recall) {
 	for _, r := range m.Recalls {
-		if r.Gauge == asset && r.covers(at) {
+		if r.Gauge == asset && r.Covers(at) {
 			in = r
 		}
 	}
@@ -63,7 +63,7 @@ func (m *Meaning) Recalled(asset string) bool {
 // SheetRecall returns the recall that touches a sheet at a time, nil when none does.
 func (m *Meaning) SheetRecall(sheet record.ID, at record.Time) (in *Recall) {
 	for _, r := range m.Recalls {
-		if r.Sheet == sheet && r.covers(at) {
+		if r.Sheet == sheet && r.Covers(at) {
 			in = r
 		}
 	}

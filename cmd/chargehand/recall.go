@@ -3,6 +3,8 @@ package main
 import (
 	"fmt"
 	"io"
+	"slices"
+	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -17,7 +19,8 @@ type recallJSON struct {
 	Correction string        `json:"correction,omitempty"`
 	Reason     string        `json:"reason"`
 	Touched    []touchedJSON `json:"touched"`
-	Entry      string        `json:"entry,omitempty"`
+	Entry      string        `json:"entry,omitempty"` // of the recall; none with --look
+	Until      string        `json:"until,omitempty"` // when the gauge was calibrated again
 }
 
 // touchedJSON is one entry that rests on what is recalled.
@@ -59,18 +62,48 @@ func newRecallGauge() *cobra.Command {
 func newRecallSheet() *cobra.Command {
 	var since stamp
 	var reason string
-	cmd := &cobra.Command{Use: "sheet ENTRY", Short: "Recall a sheet that was entered wrongly or belongs to another type", Args: usageArgs(cobra.ExactArgs(1)),
-		Example: "  chargehand recall sheet 3f2a91c0 --since 2031-01-10 --reason \"a page of another type\"",
-		Long:    "Recall a sheet. " + recallLong + "\nWhat it decided is not assessable until the right sheet is entered."}
+	cmd := &cobra.Command{Use: "sheet ENTRY|PART", Short: "Recall a sheet that was entered wrongly or belongs to another type", Args: usageArgs(cobra.ExactArgs(1)),
+		Example: "  chargehand recall sheet HA-40 --since 2031-01-10 --reason \"a page of another type\"\n  chargehand recall sheet 3f2a91c0 --since 2031-01-10 --reason \"a slip in the chart\"",
+		Long:    "Recall a sheet: by its entry, or by its part when the part has only one that is not recalled. " + recallLong + "\nWhat it decided is not assessable until the right sheet is entered."}
 	cmd.Flags().Var(&since, "since", "from when it does not hold")
 	cmd.Flags().StringVar(&reason, "reason", "", "what was found")
 	return recalling(cmd, func(m *ledger.Meaning, arg string) (record.Recall, error) {
-		id, err := findEntry(m, arg)
-		if err == nil && m.Item(id).Entry().Kind != record.KindSheet {
-			err = usageError(fmt.Sprintf("entry %s is a %s and no sheet", id.Short(), m.Item(id).Entry().Kind), "See 'chargehand sheet show' for the entries of sheets")
-		}
+		id, err := findSheet(m, arg)
 		return record.Recall{Sheet: id, Since: since.record(), Reason: reason}, err
 	})
+}
+
+// findSheet takes the entry of a sheet, or a part with one sheet that is not recalled.
+func findSheet(m *ledger.Meaning, arg string) (record.ID, error) {
+	var stand []*ledger.Sheet
+	known := false
+	for _, s := range m.Sheets {
+		if s.Part != arg {
+			continue
+		}
+		known = true
+		if !slices.ContainsFunc(m.Recalls, func(r *ledger.Recall) bool { return r.Sheet == s.ID }) {
+			stand = append(stand, s)
+		}
+	}
+	if known {
+		if len(stand) == 1 {
+			return stand[0].ID, nil
+		}
+		var all []string
+		for _, s := range stand {
+			all = append(all, fmt.Sprintf("%s (%s rev %s)", s.ID.Short(), s.Document, s.Revision))
+		}
+		if len(all) == 0 {
+			return record.ID{}, usageError(fmt.Sprintf("every sheet of part %q is recalled already", arg), "See 'chargehand recall list'")
+		}
+		return record.ID{}, usageError(fmt.Sprintf("part %q has %d sheets", arg, len(all)), "Name the entry of one: "+strings.Join(all, ", "))
+	}
+	id, err := findEntry(m, arg)
+	if err == nil && m.Item(id).Entry().Kind != record.KindSheet {
+		err = usageError(fmt.Sprintf("entry %s is a %s and no sheet", id.Short(), m.Item(id).Entry().Kind), "See 'chargehand sheet show' for the entries of sheets")
+	}
+	return id, err
 }
 
 // recalling shows what a recall touches before it asks to sign.
@@ -91,7 +124,7 @@ func recalling(cmd *cobra.Command, body func(*ledger.Meaning, string) (record.Re
 				return err
 			}
 			w := quietWith(cmd, asJSON)
-			j := recallFacts(m, m.WithRecall(r), r)
+			j := recallFacts(m, m.WithRecall(r), &ledger.Recall{Recall: r})
 			j.print(w)
 			if !look {
 				v, err := h.sign(cmd, w, b, dir, ledger.Draft{Kind: record.KindRecall, Body: r})
@@ -110,10 +143,13 @@ func recalling(cmd *cobra.Command, body func(*ledger.Meaning, string) (record.Re
 }
 
 // recallFacts lists what rests on the recalled thing, judged without the recall and with it.
-func recallFacts(without, with *ledger.Meaning, r record.Recall) recallJSON {
+func recallFacts(without, with *ledger.Meaning, r *ledger.Recall) recallJSON {
 	j := recallJSON{Since: clock(r.Since), Reason: r.Reason, Touched: []touchedJSON{}}
 	if r.Correction != nil {
 		j.Correction = written(*r.Correction).String()
+	}
+	if r.Until != 0 {
+		j.Until = clock(record.Time{Unix: r.Until})
 	}
 	j.What = "gauge " + r.Gauge
 	if r.Gauge == "" {
@@ -125,12 +161,14 @@ func recallFacts(without, with *ledger.Meaning, r record.Recall) recallJSON {
 		for _, id := range u.Work {
 			it := without.Item(id)
 			_, gauge, done := ledger.Subject(it.Body)
+			if !r.Covers(done) || r.Gauge != "" && gauge != r.Gauge {
+				continue
+			}
 			was, err := verdict.Judge(without, id, it.Body)
 			if err != nil {
 				continue
 			}
-			touched := r.Gauge != "" && gauge == r.Gauge || r.Gauge == "" && was.Sheet != nil && was.Sheet.ID == r.Sheet
-			if !touched || done.Unix < r.Since.Unix {
+			if r.Gauge == "" && (was.Sheet == nil || was.Sheet.ID != r.Sheet) && !slices.ContainsFunc(was.Contested, func(s *ledger.Sheet) bool { return s.ID == r.Sheet }) {
 				continue
 			}
 			now, err := verdict.Judge(with, id, it.Body)
@@ -145,6 +183,9 @@ func recallFacts(without, with *ledger.Meaning, r record.Recall) recallJSON {
 
 func (j recallJSON) print(w io.Writer) {
 	fmt.Fprintf(w, "recall      %s since %s: %s\n", j.What, j.Since, j.Reason)
+	if j.Until != "" {
+		fmt.Fprintf(w, "until       %s, when it was calibrated again\n", j.Until)
+	}
 	if j.Correction != "" {
 		fmt.Fprintf(w, "correction  %s is added to what it showed\n", j.Correction)
 	}
@@ -171,7 +212,7 @@ func newRecallList() *cobra.Command {
 			m := b.Meaning()
 			list := []recallJSON{}
 			for _, r := range m.Recalls {
-				j := recallFacts(m.WithoutRecall(r.ID), m, r.Recall)
+				j := recallFacts(m.WithoutRecall(r.ID), m, r)
 				j.Entry = r.ID.String()
 				list = append(list, j)
 			}

@@ -230,7 +230,7 @@ type Moved struct {
 	Unit     record.UnitRef
 	Was, Now calc.Class
 	Sentence string
-	Cause    record.ID // the entry that moved it: a sheet, a gauge, or a correction or withdrawal; zero when it is none of these
+	Cause    record.ID // the entry that moved it: a sheet, a gauge, a recall, or a correction or withdrawal; zero when it is none of these
 }
 
 // AgainstShown says which entries of the set show another verdict today than their signer was shown, and by which entry: the
@@ -263,14 +263,21 @@ func unseen(m *ledger.Meaning, it *ledger.Item, j Judged) record.ID {
 	return record.ID{}
 }
 
-// bearing are the entries whose words make a verdict: the one judged, its sheet and its gauge.
+// bearing are the entries whose words make a verdict: the one judged, its sheet and its gauge, and what recalls those.
 func bearing(m *ledger.Meaning, id record.ID, j Judged) []record.ID {
 	on := []record.ID{id}
+	_, gauge, done := ledger.Subject(m.Item(id).Body)
 	if j.Sheet != nil {
 		on = append(on, j.Sheet.ID)
+		if r := m.SheetRecall(j.Sheet.ID, done); r != nil {
+			on = append(on, r.ID)
+		}
 	}
-	if g := m.Gauge(ledger.GaugeOf(m.Item(id).Body)); g != nil {
+	if g := m.Gauge(gauge); g != nil {
 		on = append(on, g.ID)
+		if r := m.GaugeRecall(gauge, done); r != nil {
+			on = append(on, r.ID)
+		}
 	}
 	return on
 }

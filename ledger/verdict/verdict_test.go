@@ -295,6 +295,12 @@ func TestAgainstShownNamesWhatTheSignerHadNotSeen(t *testing.T) {
 			return l.sign(record.KindGauge, g, nil)
 		}, calc.NotAssessable},
 		{"the sheet corrected", func(l *laptop, s record.ID) record.ID { return l.correct(s, record.KindSheet, tight("A", 1500)) }, calc.Fail},
+		{"the gauge recalled", func(l *laptop, _ record.ID) record.ID {
+			return l.sign(record.KindRecall, record.Recall{Gauge: gauge().Asset, Since: stamp(start), Correction: of(psi(-300)), Reason: "reads high"}, nil)
+		}, calc.Fail},
+		{"the sheet recalled", func(l *laptop, s record.ID) record.ID {
+			return l.sign(record.KindRecall, record.Recall{Sheet: s, Since: stamp(start), Reason: "a page of another type"}, nil)
+		}, calc.NotAssessable},
 		{"nothing that bears on it", func(l *laptop, _ record.ID) record.ID {
 			l.sign(record.KindUnitRegistered, record.UnitRegistered{Part: unit.Part, Serial: "105"}, nil)
 			return record.ID{}
