@@ -2,6 +2,8 @@ package main
 
 import (
 	"fmt"
+	"maps"
+	"regexp"
 	"slices"
 	"strings"
 	"testing"
@@ -111,6 +113,123 @@ func TestRecallOfASheet(t *testing.T) {
 	}
 	b.sign(words("sheet add --part HA-40 --charge 1240psi --minus 100psi --plus 100psi --at 70F --document CM-29 --revision A1 --effective 2020-01-01")...)
 	if out := b.want(statusOK, "board"); !strings.Contains(out, "1140 to 1340 psi") {
+		t.Error(out)
+	}
+}
+
+var movedLine = regexp.MustCompile(`moved       (\S+), entry (\w+): (still )?([^,]+), (?:now ([^,]+), because|by other figures, because) of recall`)
+
+// movedBy are the entries that a signing told as moved by a recall, with what each was and became.
+func movedBy(out string) map[string]string {
+	moved := map[string]string{}
+	for _, m := range movedLine.FindAllStringSubmatch(out, -1) {
+		was, now := m[4], m[5]
+		if m[3] != "" {
+			now = was
+		}
+		moved[m[2]] = m[1] + " " + was + " > " + now
+	}
+	return moved
+}
+
+// What a recall lists before it is signed is what moves when it is: the same entries, from and to the same verdicts. Withdrawn, it leaves
+// every verdict as it was.
+func TestARecallListsWhatMoves(t *testing.T) {
+	b := newBench(t)
+	b.equip()
+	b.sign(words("unit add --part HA-40 --serial 105")...)
+	for _, x := range []struct {
+		unit, day, gauge string
+		psi              float64
+	}{{"104", "2031-01-01", "M-1", 1250}, {"104", "2031-02-01", "M-1", 1200}, {"105", "2031-02-01", "M-1", 1300}, {"105", "2031-02-02", "M-2", 1200}, {"104", "2031-02-03", "M-1", 1380}} {
+		b.want2(words(fmt.Sprintf("check %s --gauge %s --pressure %dpsi --temperature 40F --from shell --relieved pedal --fluid 0psi --done %sT08:00Z --unlikely-because x --passphrase-file pp", x.unit, x.gauge, dial(t, x.psi, 40), x.day))...)
+	}
+	b.want2(words("charge 105 --gauge M-1 --found 1100psi --found-temperature 70F --found-from shell --left 1200psi --left-temperature 70F --left-from shell --bottle none --relieved pedal --fluid 0psi --done 2031-02-05T08:00Z --unlikely-because x --passphrase-file pp")...)
+	board := func() string { return b.want(statusOK, "board") }
+	before := board()
+	for _, line := range []string{
+		"recall gauge M-1 --since 2031-01-15 --reason reads_high --correction=-60psi",
+		"recall gauge M-1 --since 2031-01-15 --reason dropped",
+		"recall sheet HA-40 --since 2031-02-02 --reason a_page_of_another_type",
+	} {
+		var look recallJSON
+		b.json(&look, append(words(line), "--look")...)
+		if board() != before {
+			t.Fatalf("%s: looking changed the board", line)
+		}
+		out := b.sign(words(line)...)
+		list := map[string]string{}
+		for _, x := range look.Touched {
+			list[x.Entry[:8]] = x.Unit + " " + x.Was + " > " + x.Becomes
+			if !strings.Contains(out[:strings.Index(out, "signed ")], "entry "+x.Entry[:8]) {
+				t.Errorf("%s: %.8s is not told before it is signed", line, x.Entry)
+			}
+		}
+		if moved := movedBy(out); len(moved) == 0 || !maps.Equal(moved, list) {
+			t.Errorf("%s: lists %v, and moved %v\n%s", line, list, moved, out)
+		}
+		if board() == before {
+			t.Errorf("%s: the board is as before", line)
+		}
+		var inForce []recallJSON
+		b.json(&inForce, "recall", "list")
+		if len(inForce) != 1 || !slices.Equal(inForce[0].Touched, look.Touched) {
+			t.Fatalf("%s: in force %+v", line, inForce)
+		}
+		out = b.sign("withdraw", inForce[0].Entry[:8], "--reason", "a slip")
+		if n := strings.Count(out, "moved "); n != len(list) || board() != before {
+			t.Errorf("%s: withdrawn, %d moved back of %d\n%s%s", line, n, len(list), out, board())
+		}
+	}
+	if out := b.want(statusOK, "recall", "list"); !strings.Contains(out, "no recall is in force") {
+		t.Error(out)
+	}
+}
+
+// What was done after the new calibration is not touched, and the list says when that was.
+func TestARecallEndsWithANewCalibration(t *testing.T) {
+	b := newBench(t)
+	b.equip()
+	b.read("2031-01-01", "M-1", 1250, 40)
+	b.sign(words("recall gauge M-1 --since 2030-12-01 --reason dropped")...)
+	b.sign(words("gauge add --asset M-1 --span 2000psi --accuracy ASME_3A --division 5psi --calibrated 2031-02-01 --due 2120-01-10")...)
+	b.read("2031-03-01", "M-1", 1250, 40)
+	var list []recallJSON
+	b.json(&list, "recall", "list")
+	if len(list) != 1 || len(list[0].Touched) != 1 || !strings.HasPrefix(list[0].Touched[0].At, "2031-01-01") || !strings.HasPrefix(list[0].Until, "2031-02-01") {
+		t.Errorf("%+v", list)
+	}
+	if out := b.want(statusOK, "recall", "list"); !strings.Contains(out, "until       2031-02-01") {
+		t.Error(out)
+	}
+	if out := b.want(statusOK, "gauge", "list"); strings.Contains(out, "recalled") {
+		t.Error(out)
+	}
+}
+
+// A part names its sheet only when there is no doubt which.
+func TestASheetIsRecalledByItsPart(t *testing.T) {
+	b := newBench(t)
+	b.equip()
+	look := func(status int, arg string) string {
+		return b.want(status, append(words("recall sheet "+arg+" --since 2031-01-01 --reason x"), "--look")...)
+	}
+	if out := look(statusOK, "HA-40"); !strings.Contains(out, "sheet CM-29 rev A of HA-40") {
+		t.Error(out)
+	}
+	b.sign(words("sheet add --part HA-40 --charge 1250psi --minus 50psi --plus 50psi --at 70F --document CM-29 --revision B --effective 2020-02-01")...)
+	if out := look(statusUsage, "HA-40"); !strings.Contains(out, `part "HA-40" has 2 sheets`) || !strings.Contains(out, "CM-29 rev B") {
+		t.Error(out)
+	}
+	var sheets []sheetJSON
+	b.json(&sheets, "sheet", "show")
+	for _, s := range sheets {
+		b.sign("recall", "sheet", s.Entry[:8], "--since", "2031-01-01", "--reason", "x")
+	}
+	if out := look(statusUsage, "HA-40"); !strings.Contains(out, "is recalled already") {
+		t.Error(out)
+	}
+	if out := look(statusUsage, "HA-99"); !strings.Contains(out, `"HA-99" names`) {
 		t.Error(out)
 	}
 }
