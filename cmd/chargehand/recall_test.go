@@ -1,12 +1,18 @@
 package main
 
 import (
+	"crypto/ed25519"
+	"crypto/sha256"
 	"fmt"
 	"maps"
 	"regexp"
 	"slices"
 	"strings"
 	"testing"
+	"time"
+
+	"example.org/chargehand/ledger"
+	"example.org/chargehand/ledger/record"
 )
 
 func TestFaults(t *testing.T) {
@@ -231,5 +237,68 @@ func TestASheetIsRecalledByItsPart(t *testing.T) {
 	}
 	if out := look(statusUsage, "HA-99"); !strings.Contains(out, `"HA-99" names`) {
 		t.Error(out)
+	}
+}
+
+// Recalling one of two contested sheets touches what was judged by the other, too, since the worse of them counted.
+func TestARecallOfAContestedSheet(t *testing.T) {
+	now := time.Date(2031, 3, 4, 5, 0, 0, 0, time.UTC)
+	clock := func() time.Time { now = now.Add(time.Minute); return now }
+	keys := map[string]ed25519.PrivateKey{}
+	for _, who := range []string{"a", "b"} {
+		seed := sha256.Sum256([]byte(who))
+		keys[who] = ed25519.NewKeyFromSeed(seed[:])
+	}
+	roles := []record.Role{record.RoleLead, record.RoleTechnician}
+	a, err := ledger.Found(t.TempDir(), keys["a"], record.Founding{Title: "Dry Creek", Name: "A", Roles: roles, PressureUnit: "psi", TemperatureUnit: "F", Format: 1}, clock)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer a.Close()
+	b, err := ledger.Open(t.TempDir(), a.ID(), clock)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer b.Close()
+	sign := func(book *ledger.Book, who string, kind record.Kind, body any) record.ID {
+		t.Helper()
+		v, err := book.Author(keys[who], ledger.Draft{Kind: kind, Body: body})
+		if err != nil {
+			t.Fatal(err)
+		}
+		return v.ID()
+	}
+	pull := func(to, from *ledger.Book) {
+		t.Helper()
+		var batch []record.Verified
+		for v, err := range from.Missing(t.Context(), to.Frontier()) {
+			if err != nil {
+				t.Fatal(err)
+			}
+			batch = append(batch, v)
+		}
+		if _, err := to.Merge(t.Context(), batch); err != nil {
+			t.Fatal(err)
+		}
+	}
+	am := func(m int64, unit string) record.Amount { return record.Amount{Mantissa: m, Unit: unit} }
+	day, unit := record.Time{Unix: now.Unix() - 86400}, record.UnitRef{Part: "HA-40", Serial: "104"}
+	sheet := func(charge int64) record.Sheet {
+		c, tol := am(charge, "psi"), am(100, "psi")
+		return record.Sheet{Part: "HA-40", Gas: "nitrogen", ReferenceTemperature: am(70, "F"), Charge: &c, Minus: &tol, Plus: &tol, Document: "CM-29", Revision: "B", Effective: day}
+	}
+	sign(a, "a", record.KindHandAdmitted, record.HandAdmitted{Name: "B", Roles: roles, Key: record.KeyID(keys["b"].Public().(ed25519.PublicKey))})
+	sign(a, "a", record.KindUnitRegistered, record.UnitRegistered{Part: unit.Part, Serial: unit.Serial})
+	sign(a, "a", record.KindGauge, record.Gauge{Asset: "G-7", Span: am(3000, "psi"), Accuracy: "ASME 1A", Graduation: am(10, "psi"), Calibrated: day, Due: record.Time{Unix: day.Unix + 1e8}})
+	pull(b, a)
+	good, bad := sign(a, "a", record.KindSheet, sheet(1250)), sign(b, "b", record.KindSheet, sheet(1600))
+	reading := sign(a, "a", record.KindReading, record.Reading{Unit: unit, Gauge: "G-7", Pressure: am(1180, "psi"), Temperature: am(41, "F"), TemperatureFrom: "shell", Relieved: "pedal", FluidPressure: am(0, "psi"), Done: record.Time{Unix: now.Unix()}})
+	pull(a, b)
+	m := a.Meaning()
+	for name, id := range map[string]record.ID{"that gave the verdict": bad, "beside it": good} {
+		r := &ledger.Recall{Recall: record.Recall{Sheet: id, Since: day, Reason: "x"}}
+		if j := recallFacts(m, m.WithRecall(r.Recall), r); len(j.Touched) != 1 || j.Touched[0].Entry != reading.String() || j.Touched[0].Was != "fail" {
+			t.Errorf("the sheet %s: %+v", name, j.Touched)
+		}
 	}
 }
