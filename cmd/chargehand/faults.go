@@ -130,8 +130,10 @@ func faultFacts(m *ledger.Meaning, u *ledger.Unit, noticed []string, all bool) f
 		j.Allowed = "loss not known: " + watched.NoAllow
 	case h.Allowed > 0:
 		j.Allowed = fmt.Sprintf("a loss of %s a day, by sheet %s rev %s", h.Limits.In.Pressure(h.Allowed), watched.Sheet.Document, watched.Sheet.Revision)
+	case watched.Sheet == nil || watched.Sheet.Leak != nil: // the trend stopped before it
+		j.Allowed = "loss not known: " + watched.Why
 	default:
-		j.Allowed = "loss not known: no sheet states it"
+		j.Allowed = fmt.Sprintf("loss not known: sheet %s rev %s states none", watched.Sheet.Document, watched.Sheet.Revision)
 	}
 	for _, p := range watched.Passed {
 		j.Passed = append(j.Passed, unusedJSON{p.Entry.String(), p.Why})

@@ -165,7 +165,7 @@ func TestFaultsSayWhatTheyRestOn(t *testing.T) {
 	b.equip()
 	var j faultsJSON
 	b.json(&j, "faults", "104")
-	if j.Readings != 0 || len(j.Causes) != 0 || !strings.Contains(b.want(statusOK, "faults", "104"), "nothing to reason from") {
+	if j.Readings != 0 || len(j.Causes) != 0 || j.Allowed != "loss not known: nothing was read on it that can be used" || !strings.Contains(b.want(statusOK, "faults", "104"), "nothing to reason from") {
 		t.Errorf("nothing read: %+v", j)
 	}
 	b.json(&j, "faults", "104", "--seen", "Oil at the gas valve", "--seen", "foam in the reservoir")
@@ -182,7 +182,7 @@ func TestFaultsSayWhatTheyRestOn(t *testing.T) {
 	for revision, want := range map[string]string{
 		"B --leak 3psi/day":   "a loss of 3 psi a day, by sheet CM-29 rev B",
 		"C --leak 5mL/h":      "loss not known: the sheet allows 5 mL/h of free gas but gives no gas volume to turn it into pressure",
-		"D --gas-volume 1in3": "loss not known: no sheet states it",
+		"D --gas-volume 1in3": "loss not known: sheet CM-29 rev D states none",
 	} {
 		b.sign(words("sheet add --part HA-40 --charge 1250psi --minus 100psi --plus 100psi --at 70F --document CM-29 --effective 2020-01-02 --revision " + revision)...)
 		if b.json(&j, "faults", "104"); j.Allowed != want {
