@@ -611,19 +611,24 @@ func (m *Meaning) inForce(part string, at record.Time) []*Sheet {
 	if in == nil {
 		return nil
 	}
-	recalled := m.SheetRecall(in.ID, at) != nil
 	var same []*Sheet
 	for _, s := range m.sheets[part] {
-		if s.Effective.Unix == in.Effective.Unix && (m.SheetRecall(s.ID, at) != nil) == recalled {
+		if s.Effective.Unix == in.Effective.Unix {
 			same = append(same, s)
 		}
 	}
 	if len(same) < 2 {
 		return same
 	}
-	return slices.DeleteFunc(slices.Clone(same), func(s *Sheet) bool {
+	left := slices.DeleteFunc(slices.Clone(same), func(s *Sheet) bool {
 		return slices.ContainsFunc(same, func(o *Sheet) bool { return o != s && m.Saw(o.ID, s.ID) })
 	})
+	// Of sheets that contest each other a recalled one gives way; one that was replaced before does not come back.
+	recalled := func(s *Sheet) bool { return m.SheetRecall(s.ID, at) != nil }
+	if !slices.ContainsFunc(left, func(s *Sheet) bool { return !recalled(s) }) {
+		return left
+	}
+	return slices.DeleteFunc(left, recalled)
 }
 
 func either(roles []record.Role) string {

@@ -193,6 +193,21 @@ func TestSettling(t *testing.T) {
 			t.Errorf("%s: %s", reading, out)
 		}
 	}
+	// A recalled gauge: with a correction the settled pressure is another, without one it says nothing.
+	b.sign(words("recall gauge M-1 --since 2031-01-01 --reason reads_high --correction=-20psi")...)
+	was := j.SettledPsi
+	b.json(&j, "settle", "104")
+	if math.Abs(j.SettledPsi-was+20) > 0.1 {
+		t.Errorf("corrected by -20 psi it settles at %v psi, before at %v", j.SettledPsi, was)
+	}
+	var list []recallJSON
+	b.json(&list, "recall", "list")
+	b.sign("withdraw", list[0].Entry[:8], "--reason", "dropped, not high")
+	b.sign(words("recall gauge M-1 --since 2031-01-01 --reason dropped")...)
+	if out := b.want(statusNot, "settle", "104"); !strings.Contains(out, "gauge M-1 was recalled: dropped") {
+		t.Error(out)
+	}
+	b.sign(words("gauge add --asset M-1 --span 2000psi --accuracy ASME_3A --division 5psi --calibrated 2031-02-01 --due 2120-01-10")...)
 	few := words("settle 104 --gauge M-1 --closed 2031-03-04T21:15Z --reading 30s=1300psi --reading 60s=1290psi --passphrase-file pp")
 	if out := b.want(statusNot, few...); !strings.Contains(out, "too few readings") || strings.Contains(out, "signed  ") {
 		t.Error(out)

@@ -112,4 +112,27 @@ func TestContestedSheets(t *testing.T) {
 	if j := judge(a); len(j.Contested) != 0 {
 		t.Errorf("equal sheets: %s", j.Sentence)
 	}
+	// Of two that contest each other the recalled one gives way, whichever of them stands first by the clock; one that both had
+	// replaced does not come back when both are recalled.
+	for _, first := range []*ledger.Book{a, b} {
+		other, who, whom := b, "a", "b"
+		if first == b {
+			other, who, whom = a, "b", "a"
+		}
+		wrong := sign(first, who, record.KindSheet, sheet(1700, "D"))
+		right := sign(other, whom, record.KindSheet, sheet(1255, "E"))
+		meet()
+		sign(a, "a", record.KindRecall, record.Recall{Sheet: wrong, Since: day, Reason: "another type's page"})
+		meet()
+		for _, book := range []*ledger.Book{a, b} {
+			if j := judge(book); j.Class != calc.Pass || j.Sheet.ID != right || len(j.Contested) != 0 {
+				t.Errorf("one recalled, first on %s: %s", who, j.Sentence)
+			}
+		}
+		sign(a, "a", record.KindRecall, record.Recall{Sheet: right, Since: day, Reason: "another type's page too"})
+		meet()
+		if j := judge(b); j.Class != calc.NotAssessable {
+			t.Errorf("both recalled: %s", j.Sentence)
+		}
+	}
 }

@@ -49,6 +49,15 @@ func fitSettling(m *ledger.Meaning, b record.Settling, known settle.Constants) (
 	if err != nil {
 		return nil, err
 	}
+	shift := quantity.GaugePressure(0)
+	if r := m.GaugeRecall(b.Gauge, b.Closed); r != nil {
+		if r.Correction == nil {
+			return nil, fmt.Errorf("gauge %s was recalled: %s", b.Gauge, r.Reason)
+		}
+		if shift, err = written(*r.Correction).Gauge(); err != nil {
+			return nil, fmt.Errorf("correction of the recall: %w", err)
+		}
+	}
 	if b.Seconds.Unit != "s" {
 		return nil, fmt.Errorf("times in %q; they are in s", b.Seconds.Unit)
 	}
@@ -58,6 +67,7 @@ func fitSettling(m *ledger.Meaning, b record.Settling, known settle.Constants) (
 		if err != nil {
 			return nil, err
 		}
+		p += shift
 		after := float64(b.Seconds.Values[i]) * math.Pow10(b.Seconds.Exponent)
 		if !(after >= 0 && after < 1e7) {
 			return nil, fmt.Errorf("%v s after the valve was closed is no time of a settling", after)
